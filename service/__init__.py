@@ -1,0 +1,1 @@
+"""Shuntbook: track circuit records, limits and forecasts for a signalling depot."""
