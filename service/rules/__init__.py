@@ -1,0 +1,1 @@
+"""What must hold: pure functions over frozen values, standard library and dateutil only."""
