@@ -48,7 +48,7 @@ def test_no_lock_file_that_names_hosts() -> None:
 
 # Written so that these patterns do not match their own source.
 FORBIDDEN = {
-    "a package index": r"index-ur[l]|find-link[s]|trusted-hos[t]|(pypi|pythonhosted|npmjs|debian)\.(or[g]|co[m])",
+    "a package index": r"index-ur[l]|find-link[s]|trusted-hos[t]|(pypi|pythonhosted|npmjs)\.(or[g]|co[m])",
     "a path of one machine": r"(^|[^A-Za-z0-9_.])/(wor[k]|far[m])/",
 }
 
