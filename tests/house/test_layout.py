@@ -50,6 +50,7 @@ def test_no_lock_file_that_names_hosts() -> None:
 FORBIDDEN = {
     "a package index": r"index-ur[l]|find-link[s]|trusted-hos[t]|(pypi|pythonhosted|npmjs)\.(or[g]|co[m])",
     "a path of one machine": r"(^|[^A-Za-z0-9_.])/(wor[k]|far[m])/",
+    "a task by its number": r"\b[Ii]ssue #?\d",
 }
 
 
