@@ -1,0 +1,1 @@
+"""Wire schemas, one module a noun."""

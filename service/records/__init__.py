@@ -1,0 +1,1 @@
+"""What is kept: engine, column types, tables, queries, journal, unit of work."""
