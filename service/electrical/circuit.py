@@ -38,7 +38,7 @@ class Feed:
 
 @dataclass(frozen=True, slots=True)
 class Line:
-    """Length [m], loop impedance of both rails [ohm/km], ballast from rail to rail [ohm·km], may be infinite."""
+    """Length [m], loop impedance of both rails [ohm/km], ballast rail to rail, `math.inf` allowed [ohm·km]."""
 
     length_m: RealLike
     loop_ohm_per_km: PhasorLike
@@ -246,7 +246,8 @@ def operating_point(circuit: PlainCircuit, shunt: Shunt | None = None) -> Operat
     --------
     10 V behind 7.2 ohm, 1 km at 0.0289 ohm/km a rail and 10.63 ohm·km, a 20 ohm relay:
 
-    >>> circuit = PlainCircuit(0.0, Feed(10.0, 7.2), Line(1000.0, 0.0578, 10.63), Relay(20.0, 0.0, 1.62, 1.10))
+    >>> relay = Relay(20.0, 0.0, 1.62, 1.10)
+    >>> circuit = PlainCircuit(0.0, Feed(10.0, 7.2), Line(1000.0, 0.0578, 10.63), relay)
     >>> round(float(operating_point(circuit).relay_current_a.real), 3)
     0.245
     """
@@ -285,7 +286,7 @@ def rail_voltage(circuit: PlainCircuit, position_m: RealLike) -> Phasors:
     --------
     >>> circuit = PlainCircuit(0.0, Feed(4.0, 5.0), Line(1000.0, 0.34, 3.0), Relay(10.0, 0.0, 0.9, 0.6))
     >>> [round(v, 5) for v in rail_voltage(circuit, np.array([0.0, 1000.0])).real.tolist()]
-    [1.31597, 1.2053]
+    [1.31597, 1.20526]
     """
     share = share_of(circuit, position_m, ("position_m",))
     ends = ends_of(circuit)
@@ -327,9 +328,7 @@ def check_reach(circuit: PlainCircuit, position_m: RealLike) -> None:
         raise NoAnswerError("tuned_zone", "no linear model holds inside a tuned zone; ask outside it")
 
 
-def _around(
-    circuit: PlainCircuit, ends: Ends, shunt: Shunt | None
-) -> tuple[TwoPort, TwoPort, Reals | None]:
+def _around(circuit: PlainCircuit, ends: Ends, shunt: Shunt | None) -> tuple[TwoPort, TwoPort, Reals | None]:
     if shunt is None:
         return series(0.0), ends.line(1.0), None
     not_negative(("shunt", "ohm"), shunt.ohm)

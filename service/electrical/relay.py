@@ -119,12 +119,14 @@ class VaneRelay(Relay):
         >>> round(float(vane.pull_v(np.asarray(10j * (0.5 - 3**0.5 / 2 * 1j)))), 3)
         8.66
         """
-        return np.real(coil_v * self._steering())
+        pull: Reals = np.real(coil_v * self._steering())
+        return pull
 
     def shunt_terms(self, clear_v: Numbers, threshold_v: RealLike) -> tuple[Reals, Numbers]:
         """Compute a and w of the quadratic in `Relay.shunt_terms`: w = V·steering/threshold, a = Re w - 1."""
         steer = clear_v * self._steering() / np.asarray(threshold_v)
-        return np.real(steer) - 1, steer
+        excess: Reals = np.real(steer) - 1
+        return excess, steer
 
     def _steering(self) -> Numbers:
         turn = np.exp(-1j * np.asarray(self.ideal_angle_rad))
