@@ -1,6 +1,7 @@
 """How migrations run: on the connection that the service hands over, in its transaction."""
 
 from alembic import context
+
 from service.records.tables import metadata
 
 connection = context.config.attributes["connection"]

@@ -5,8 +5,8 @@ Revises: none
 """
 
 import sqlalchemy as sa
-
 from alembic import op
+
 from service.records import columns
 from service.records.journal import POSTGRES_APPEND
 
@@ -338,19 +338,12 @@ def upgrade() -> None:
         "status",
         sa.Column("depot", columns.Name(), nullable=False),
         sa.Column("section", columns.Name(), nullable=False),
-        sa.Column("section_version", sa.Integer(), nullable=False),
-        sa.Column("state", sa.String(), nullable=False),
         sa.Column("as_of", sa.Date(), nullable=False),
-        sa.Column("book", sa.String(), nullable=True),
-        sa.Column("edition", sa.String(), nullable=True),
         sa.Column("compliance", columns.Name(), nullable=True),
         sa.Column("overdue", sa.Boolean(), nullable=False),
         sa.Column("worst_hazard", columns.Name(), nullable=True),
         sa.Column("next_due_on", sa.Date(), nullable=True),
         sa.Column("holds_until", sa.Date(), nullable=True),
-        sa.Column("verdicts", sa.String(), nullable=False),
-        sa.Column("tasks", sa.String(), nullable=False),
-        sa.Column("cautions", sa.String(), nullable=False),
         sa.Column("sequence", sa.Integer(), nullable=False),
         sa.CheckConstraint(
             "compliance IN ('no', 'not_shown', 'yes')", name=op.f("ck_status_compliance_known")
@@ -377,6 +370,8 @@ def upgrade() -> None:
         sa.Column("visited_at", columns.UtcDateTime(), nullable=False),
         sa.Column("received_at", columns.UtcDateTime(), nullable=False),
         sa.Column("received_by", sa.String(), nullable=False),
+        sa.Column("holder", sa.String(), nullable=False),
+        sa.Column("found_outside", sa.Boolean(), nullable=False),
         sa.Column("clock_offset_s", sa.Integer(), nullable=True),
         sa.Column("device", columns.Name(), nullable=True),
         sa.Column("tester", sa.String(), nullable=True),

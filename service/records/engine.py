@@ -94,11 +94,11 @@ def translated() -> Iterator[None]:
 
 
 def _meaning(error: exc.DBAPIError) -> Exception:
+    if isinstance(error, exc.IntegrityError):
+        return _taken(error)
     if isinstance(error.orig, sqlite3.Error):
         return _sqlite_meaning(error.orig, error)
     state = str(getattr(error.orig, "sqlstate", None) or "")
-    if isinstance(error, exc.IntegrityError):
-        return error
     if state.startswith("42"):  # undefined table, wrong column: not migrated
         return StorageFaultError("The database is not migrated to this version: run `shuntbook migrate`.")
     if state.startswith("53") or state == "25006":
@@ -108,6 +108,16 @@ def _meaning(error: exc.DBAPIError) -> Exception:
             "The database was not reached, or went away: what was sent may or may not have been stored. "
             "Post the same again."
         )
+    return error
+
+
+def _taken(error: exc.DBAPIError) -> Exception:
+    """Two requests made the same record at the same moment; anything else is a fault of ours."""
+    unique = getattr(error.orig, "sqlstate", None) == "23505" or getattr(
+        error.orig, "sqlite_errorcode", None
+    ) in (sqlite3.SQLITE_CONSTRAINT_UNIQUE, sqlite3.SQLITE_CONSTRAINT_PRIMARYKEY)
+    if unique:
+        return UnavailableError("Another request wrote the same record at the same moment; post the same again.")
     return error
 
 

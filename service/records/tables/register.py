@@ -128,7 +128,8 @@ class Concession(SQLModel, table=True):
 
 
 class Status(SQLModel, table=True):
-    """A section judged for a depot day; true until `holds_until` unless something is written."""
+    """What lists filter by: a section judged for a depot day, true until `holds_until` unless
+    something is written. Its verdicts are judged anew when somebody asks for them."""
 
     __tablename__ = "status"
     __table_args__ = (
@@ -143,17 +144,10 @@ class Status(SQLModel, table=True):
 
     depot: str = key()
     section: str = key()
-    section_version: int
-    state: str
     as_of: date
-    book: str | None = None
-    edition: str | None = None
     compliance: str | None = name(null=True)
     overdue: bool
     worst_hazard: str | None = name(null=True)
     next_due_on: date | None = None
     holds_until: date | None = None
-    verdicts: str
-    tasks: str
-    cautions: str
     sequence: int

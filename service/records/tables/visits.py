@@ -80,6 +80,10 @@ class VisitRow(SQLModel, table=True):
     visited_at: datetime = instant()
     received_at: datetime = instant()
     received_by: str
+    holder: str
+    """The holder of the key it came with."""
+    found_outside: bool
+    """As found it was outside a wrong-side limit: voiding or replacing it takes a second holder."""
     clock_offset_s: int | None = None
     device: str | None = name(null=True)
     tester: str | None = None
