@@ -6,6 +6,7 @@ import re
 import subprocess
 import sys
 import tomllib
+from importlib.metadata import packages_distributions
 from pathlib import Path
 from typing import Any
 
@@ -14,6 +15,7 @@ import yaml
 from packaging.requirements import Requirement
 from packaging.utils import canonicalize_name
 
+from support import house
 from support.house import ROOT
 
 CONSTRAINTS = (ROOT / "docker" / "constraints.txt").read_text().splitlines()
@@ -45,6 +47,20 @@ def test_pins_satisfy_what_the_project_asks_for() -> None:
         pin = Requirement(line)
         version = str(pin.specifier).removeprefix("==")
         assert asked.get(canonicalize_name(pin.name), pin.specifier).contains(version), line
+
+
+def test_the_service_imports_only_what_it_declares() -> None:
+    """What only the test extra brings would be missing where the service runs."""
+    project = tomllib.loads((ROOT / "pyproject.toml").read_text())["project"]
+    declared = {canonicalize_name(Requirement(line).name) for line in project["dependencies"]}
+    declared.add("starlette")  # FastAPI's own ground, whose types it hands out
+    brought_by = packages_distributions()
+    for path in house.modules(house.SERVICE, ROOT / "alembic"):
+        for package in house.imported_packages(path.read_text()) - {"service"}:
+            assert {canonicalize_name(name) for name in brought_by.get(package, [])} & declared, (
+                path,
+                package,
+            )
 
 
 def test_the_image_runs_as_an_ordinary_user() -> None:

@@ -64,16 +64,26 @@ def impure_references(source: str) -> Iterator[str]:
 
 def foreign_imports(source: str, allowed: set[str]) -> Iterator[str]:
     """Imports from outside the standard library and the modules allowed, with what lies below them."""
+    for line, name in _imports(source):
+        if not any(f"{name}.".startswith(f"{module}.") for module in allowed):
+            yield f"{line}: {name}"
+
+
+def imported_packages(source: str) -> set[str]:
+    """The top-level packages that a module imports, the standard library's left out."""
+    return {name.split(".")[0] for _, name in _imports(source)}
+
+
+def _imports(source: str) -> Iterator[tuple[int, str]]:
     for node in ast.walk(ast.parse(source)):
         names: list[str] = []
         if isinstance(node, ast.Import):
             names = [alias.name for alias in node.names]
         elif isinstance(node, ast.ImportFrom):
             names = [f"{node.module}.{alias.name}" for alias in node.names]
-        for name in names:
-            known = name.split(".")[0] in sys.stdlib_module_names
-            if not known and not any(f"{name}.".startswith(f"{module}.") for module in allowed):
-                yield f"{node.lineno}: {name}"
+        yield from (
+            (node.lineno, name) for name in names if name.split(".")[0] not in sys.stdlib_module_names
+        )
 
 
 def generator_functions(source: str) -> set[str]:
