@@ -23,7 +23,7 @@ from service.electrical.arrays import (
     positive_or_infinite,
 )
 from service.electrical.chain import TwoPort, cascade, ratio, series
-from service.electrical.line import line_of
+from service.electrical.line import UniformLine
 from service.electrical.relay import Relay, RelayState, state_of
 from service.errors import NoAnswerError, NonPhysicalError
 
@@ -38,7 +38,7 @@ class Feed:
 
 @dataclass(frozen=True, slots=True)
 class Line:
-    """Length [m], loop impedance of both rails [ohm/km], ballast rail to rail, `math.inf` allowed [ohm·km]."""
+    """Length [m], loop impedance of both rails [ohm/km], ballast rail to rail, maybe infinite [ohm·km]."""
 
     length_m: RealLike
     loop_ohm_per_km: PhasorLike
@@ -165,20 +165,15 @@ class Ends:
         What the rails see at the relay end [ohm].
     coil_per_rail : array
         Voltage at the coil for each volt between the rails at the relay end.
-    loop_ohm, leakage_s : array
-        The whole line's series impedance [ohm] and leakage [S].
+    line : UniformLine
+        The whole line.
     """
 
     emf_v: Numbers
     feed_ohm: Numbers
     relay_ohm: Numbers
     coil_per_rail: Numbers
-    loop_ohm: Numbers
-    leakage_s: Numbers
-
-    def line(self, share: RealLike) -> TwoPort:
-        """Two-port of a share of the line."""
-        return line_of(self.loop_ohm * share, self.leakage_s * share)
+    line: UniformLine
 
 
 def ends_of(circuit: PlainCircuit) -> Ends:
@@ -200,8 +195,10 @@ def ends_of(circuit: PlainCircuit) -> Ends:
         feed_ohm=number(feed_ohm),
         relay_ohm=number(relay.input_ohm(coil_ohm)),
         coil_per_rail=number(ratio(coil_ohm, relay.a * coil_ohm + relay.b, "the relay's share")),
-        loop_ohm=number(np.asarray(circuit.line.loop_ohm_per_km)) * km,
-        leakage_s=km / np.asarray(circuit.line.ballast_ohm_km),
+        line=UniformLine.of(
+            number(np.asarray(circuit.line.loop_ohm_per_km)) * km,
+            km / np.asarray(circuit.line.ballast_ohm_km),
+        ),
     )
 
 
@@ -291,7 +288,7 @@ def rail_voltage(circuit: PlainCircuit, position_m: RealLike) -> Phasors:
     share = share_of(circuit, position_m, ("position_m",))
     ends = ends_of(circuit)
     point = operating_point(circuit)
-    rest = ends.line(1 - share)
+    rest = ends.line.part(1 - share)
     return phasor(point.relay_end_rail_v * (rest.a + rest.b / ends.relay_ohm))
 
 
@@ -330,8 +327,8 @@ def check_reach(circuit: PlainCircuit, position_m: RealLike) -> None:
 
 def _around(circuit: PlainCircuit, ends: Ends, shunt: Shunt | None) -> tuple[TwoPort, TwoPort, Reals | None]:
     if shunt is None:
-        return series(0.0), ends.line(1.0), None
+        return series(0.0), ends.line.part(1.0), None
     not_negative(("shunt", "ohm"), shunt.ohm)
     share = share_of(circuit, shunt.position_m, ("shunt", "position_m"))
     check_reach(circuit, shunt.position_m)
-    return ends.line(share), ends.line(1 - share), np.asarray(shunt.ohm, dtype=np.float64)
+    return ends.line.part(share), ends.line.part(1 - share), np.asarray(shunt.ohm, dtype=np.float64)

@@ -130,7 +130,8 @@ class VaneRelay(Relay):
 
     def _steering(self) -> Numbers:
         turn = np.exp(-1j * np.asarray(self.ideal_angle_rad))
-        return np.conj(self.local_v) * turn / np.asarray(self.rated_local_v)
+        steering: Numbers = np.conj(self.local_v) * turn / np.asarray(self.rated_local_v)
+        return steering
 
 
 @dataclass(frozen=True, slots=True)
