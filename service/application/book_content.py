@@ -28,6 +28,7 @@ from service.rules.limits import (
 from service.rules.words import CircuitKind, Hazard, Place, RelativeTo, Sleepers, Traction, Work
 
 Word = Annotated[str, StringConstraints(pattern=r"^[a-z][a-z0-9_]{0,39}$")]
+RelayType = Annotated[str, StringConstraints(pattern=r"^[^\x00-\x1f\x7f]{1,80}$")]
 Name = Annotated[str, StringConstraints(pattern=r"^[A-Za-z0-9._()-]{1,40}$")]
 Text = Annotated[str, StringConstraints(min_length=1, max_length=500, pattern=r"^[^\x00-\x1f\x7f]*$")]
 TestPoint = Annotated[
@@ -63,7 +64,7 @@ class AppliesJson(Part):
     return_rails: tuple[Annotated[int, Field(ge=0, le=2)], ...] | None = Field(None, min_length=1)
     places: tuple[Place, ...] | None = Field(None, min_length=1)
     sleepers: tuple[Sleepers, ...] | None = Field(None, min_length=1)
-    relay_types: tuple[Name, ...] | None = Field(None, min_length=1)
+    relay_types: tuple[RelayType, ...] | None = Field(None, min_length=1)
     receivers: tuple[Annotated[int, Field(ge=1, le=20)], ...] | None = Field(None, min_length=1)
     choke: bool | None = None
     points: bool | None = None
@@ -270,18 +271,18 @@ def unit_faults(content: Content) -> Iterator[BookFault]:
             for end in ("first", "last"):
                 if not _in_every_year(*_month_day(getattr(task.window, end))):
                     path = ("tasks", index, "window", end)
-                    yield BookFault(path, "unknown_day", "is not a day of every year")
+                    yield BookFault(path, "unknown-day", "is not a day of every year")
 
 
 def _unit_faults(path: tuple[str | int, ...], quantity: str, unit: str) -> Iterator[BookFault]:
     known = quantities.QUANTITIES.get(quantity)
     if known is None:
-        yield BookFault((*path, "quantity"), "unknown_quantity", "is not a quantity this service knows")
+        yield BookFault((*path, "quantity"), "unknown-quantity", "is not a quantity this service knows")
     if unit not in quantities.UNITS:
-        yield BookFault((*path, "unit"), "unknown_unit", "is not a unit this service knows")
+        yield BookFault((*path, "unit"), "unknown-unit", "is not a unit this service knows")
     elif known is not None and quantities.base_unit(unit) != known.unit:
         reason = f"is not a unit of {known.quantity}, which is in {known.unit}"
-        yield BookFault((*path, "unit"), "unit_of_another_quantity", reason)
+        yield BookFault((*path, "unit"), "wrong-unit", reason)
 
 
 def _applicability(applies: AppliesJson | None) -> Applicability:

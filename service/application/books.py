@@ -13,8 +13,9 @@ from typing import Any
 import sqlalchemy as sa
 from sqlalchemy.engine import Connection, Row
 
-from service.application.book_content import Content, ContentRules
+from service.application.book_content import Content
 from service.errors import NotFoundError
+from service.records.journal import instant_text
 from service.records.tables import BookEdition, LimitBook
 from service.rules.limits import Edition
 from service.rules.words import EditionState
@@ -23,8 +24,10 @@ _edition = BookEdition.__table__  # type: ignore[attr-defined]
 _book = LimitBook.__table__  # type: ignore[attr-defined]
 
 _heads = sa.select(*(column for column in _edition.c if column.name != "content"))
-_rules: dict[str, ContentRules] = {}
-"""Digest → rules, of editions that were issued: few, and never changed."""
+Key = tuple[str, str, str, date | None, date | None, str]
+_kept: dict[Key, Edition] = {}
+"""Editions that were issued: few, and never changed. The same object each time, since an edition keeps
+what was worked out for the sections it applies to."""
 
 
 def edition_of(
@@ -36,13 +39,13 @@ def edition_of(
     digest: str,
     content_text: str,
 ) -> Edition:
-    """The rule object of an edition; an issued one's content is parsed once."""
-    rules = _rules.get(digest)
-    if rules is None:
-        rules = Content.model_validate_json(content_text).rules()
-        if state != EditionState.DRAFT:
-            _rules[digest] = rules
-    return Edition(
+    """The rule object of an edition, by its digest; an issued one is made once."""
+    key = (book, edition, state, effective_on, withdrawn_on, digest)
+    found = _kept.get(key)
+    if found is not None:
+        return found
+    rules = Content.model_validate_json(content_text).rules()
+    made = Edition(
         book=book,
         edition=edition,
         state=EditionState(state),
@@ -55,15 +58,16 @@ def edition_of(
         title=rules.title,
         dry_ballast_ohm_km=rules.dry_ballast_ohm_km,
     )
+    return made if made.state is EditionState.DRAFT else _kept.setdefault(key, made)
 
 
 def editions(connection: Connection, book: str, *, known_at: datetime | None = None) -> tuple[Edition, ...]:
     """All issued or withdrawn editions of a book, by effective day; as known at an instant, if given."""
-    return editions_of_books(connection, [book], known_at=known_at)[book]
+    return editions_of_books(connection, [book], known_at)[book]
 
 
 def editions_of_books(
-    connection: Connection, books: Iterable[str], *, known_at: datetime | None = None
+    connection: Connection, books: Iterable[str], known_at: datetime | None = None
 ) -> dict[str, tuple[Edition, ...]]:
     """As `editions`, for several books; every name asked for is a key."""
     wanted = sorted(set(books))
@@ -72,35 +76,30 @@ def editions_of_books(
         .where(sa.true() if known_at is None else _edition.c.issued_at <= known_at)
         .order_by(_edition.c.book, _edition.c.effective_on, _edition.c.edition)
     ).all()
-    texts = _contents(connection, [row for row in rows if row.digest not in _rules])
+    keys = [_key(row, known_at) for row in rows]
+    texts = _contents(connection, [key for key in keys if key not in _kept])
     found: dict[str, list[Edition]] = {book: [] for book in wanted}
-    for row in rows:
-        known = known_at is None or row.withdrawn_at is None or row.withdrawn_at <= known_at
-        found[row.book].append(
-            edition_of(
-                row.book,
-                row.edition,
-                row.state if known else EditionState.ISSUED,
-                row.effective_on,
-                row.withdrawn_on if known else None,
-                row.digest,
-                texts.get(row.digest, ""),
-            )
-        )
+    for key in keys:
+        found[key[0]].append(edition_of(*key, texts.get(key[:2], "")))
     return {book: tuple(several) for book, several in found.items()}
 
 
-def _contents(connection: Connection, rows: list[Row[Any]]) -> dict[str, str]:
-    """Digest → content, of editions whose content was not parsed before."""
-    if not rows:
+def _key(row: Row[Any], known_at: datetime | None) -> Key:
+    """What makes an edition's rule object; a withdrawal not yet known leaves it issued."""
+    if known_at is not None and row.withdrawn_at is not None and row.withdrawn_at > known_at:
+        return (row.book, row.edition, EditionState.ISSUED.value, row.effective_on, None, row.digest)
+    return (row.book, row.edition, row.state, row.effective_on, row.withdrawn_on, row.digest)
+
+
+def _contents(connection: Connection, keys: list[Key]) -> dict[tuple[str, str], str]:
+    """(book, edition) → content, of editions that were not made before."""
+    if not keys:
         return {}
-    names = [(row.book, row.edition) for row in rows]
+    names = sa.tuple_(_edition.c.book, _edition.c.edition).in_([key[:2] for key in keys])
     found = connection.execute(
-        sa.select(_edition.c.digest, _edition.c.content).where(
-            sa.tuple_(_edition.c.book, _edition.c.edition).in_(names)
-        )
+        sa.select(_edition.c.book, _edition.c.edition, _edition.c.content).where(names)
     )
-    return {row.digest: row.content for row in found}
+    return {(row.book, row.edition): row.content for row in found}
 
 
 @dataclass(frozen=True, slots=True)
@@ -174,3 +173,28 @@ def page(connection: Connection, *, after: str | None, most: int) -> tuple[BookR
     for head in connection.execute(heads):
         several[head.book].append(record_of(head))
     return tuple(BookRecord(row.book, row.title, row.created_at, tuple(several[row.book])) for row in rows)
+
+
+def wire(record: EditionRecord) -> dict[str, Any]:
+    """An edition as its answers and its journal lines show it, ready for JSON."""
+    content = {} if record.content is None else record.content.model_dump(mode="json")
+    return {
+        "book": record.book,
+        "edition": record.edition,
+        "state": record.state.value,
+        "version": record.version,
+        "digest": record.digest,
+        "drafted_at": instant_text(record.drafted_at),
+        "drafted_by": list(record.drafted_by),
+        "effective_on": _text(record.effective_on),
+        "issued_at": None if record.issued_at is None else instant_text(record.issued_at),
+        "issued_by": record.issued_by,
+        "withdrawn_on": _text(record.withdrawn_on),
+        "withdrawn_at": None if record.withdrawn_at is None else instant_text(record.withdrawn_at),
+        "withdrawn_by": record.withdrawn_by,
+        **content,
+    }
+
+
+def _text(day: date | None) -> str | None:
+    return None if day is None else day.isoformat()
