@@ -236,6 +236,7 @@ def upgrade() -> None:
         sa.Column("opened_on", sa.Date(), nullable=False),
         sa.Column("last_seen_on", sa.Date(), nullable=False),
         sa.Column("cleared_on", sa.Date(), nullable=True),
+        sa.Column("first_audit_on", sa.Date(), nullable=True),
         sa.Column("reopens", columns.Name(), nullable=True),
         sa.Column("concession", columns.Name(), nullable=True),
         sa.Column("visit", columns.Name(), nullable=True),

@@ -107,10 +107,38 @@ def returned_on(versions: Sequence[Row[Any]], day: date) -> date | None:
     return returned
 
 
-def gather(connection: Connection, moment: Moment, names: Sequence[str] | None) -> Iterator[Gathered]:
+@dataclass(frozen=True, slots=True)
+class Register:
+    """What does not change while visits are stored: records, editions, instruments."""
+
+    versions: Mapping[str, Sequence[Row[Any]]]
+    editions: Mapping[str, tuple[Edition, ...]]
+    instruments: Mapping[str, rules.Instrument]
+
+    def record(self, row: Row[Any], day: date) -> rules.SectionRecord:
+        """The record of a version, without its neighbours."""
+        return sections.record(row, returned_on(self.versions[row.section], day), {})
+
+
+def register(
+    connection: Connection, moment: Moment, names: Sequence[str], instruments: Sequence[str]
+) -> Register:
+    """Records of the named sections with the editions of every book any version names."""
+    versions = _versions(connection, moment, list(names)) if names else {}
+    named = {row.book for rows in versions.values() for row in rows if row.book is not None}
+    editions = books.editions_of_books(connection, sorted(named), moment.known_at)
+    return Register(versions, editions, _instruments(connection, moment, instruments))
+
+
+def gather(
+    connection: Connection,
+    moment: Moment,
+    names: Sequence[str] | None,
+    known: Register | None = None,
+) -> Iterator[Gathered]:
     """Facts of the named sections (None: all of the depot) in order of name.
 
-    A section that has no record yet on the day is left out.
+    A section that has no record yet on the day is left out. `known` saves reading its part again.
     """
     if names is None:
         query = sa.select(_section.c.section).where(_section.c.depot == moment.depot)
@@ -118,7 +146,7 @@ def gather(connection: Connection, moment: Moment, names: Sequence[str] | None) 
     remaining = iter(sorted(names))
     instruments = None if len(names) <= CHUNK else _instruments(connection, moment, None)
     while chunk := list(islice(remaining, CHUNK)):
-        yield from _gather_chunk(connection, moment, chunk, instruments)
+        yield from _gather_chunk(connection, moment, chunk, instruments, known)
 
 
 def _gather_chunk(
@@ -126,17 +154,19 @@ def _gather_chunk(
     moment: Moment,
     names: list[str],
     instruments: Mapping[str, rules.Instrument] | None,
+    known: Register | None,
 ) -> Iterator[Gathered]:
-    versions = _versions(connection, moment, names)
-    in_force = {name: version_on(rows, moment.as_of) for name, rows in versions.items()}
-    books_named = {row.book for row in in_force.values() if row is not None and row.book is not None}
-    editions = books.editions_of_books(connection, sorted(books_named), moment.known_at)
+    if known is None:
+        known = register(connection, moment, names, ())
+    versions, editions = known.versions, known.editions
+    in_force = {name: version_on(versions.get(name, ()), moment.as_of) for name in names}
     visits = _visits(connection, moment, names)
     readings = _readings(connection, moment, names, editions)
     concessions = _concessions(connection, moment, names)
     if instruments is None:
         used = {reading.instrument for found in readings.values() for reading in found if reading.instrument}
-        instruments = _instruments(connection, moment, sorted(used))
+        unread = sorted(used - known.instruments.keys())
+        instruments = {**known.instruments, **_instruments(connection, moment, unread)}
     polarities = _polarities(connection, moment, in_force, versions)
     for name in names:
         row = in_force.get(name)
@@ -398,9 +428,7 @@ def _instruments(
     calibrations: dict[str, list[rules.Calibration]] = defaultdict(list)
     for row in connection.execute(query):
         known = calibrations[row.name]
-        if row.calibrated_on is None or (
-            moment.known_at is not None and row.recorded_at > moment.known_at
-        ):
+        if row.calibrated_on is None or (moment.known_at is not None and row.recorded_at > moment.known_at):
             continue
         known.append(calibration_of(row))
     return {name: rules.Instrument(name, tuple(found)) for name, found in calibrations.items()}

@@ -6,7 +6,7 @@ change a status goes through `rejudge_and_append`.
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Sequence
+from collections.abc import Iterable, Iterator, Sequence
 from dataclasses import dataclass
 from datetime import date, datetime
 from typing import Any
@@ -15,7 +15,7 @@ import sqlalchemy as sa
 from sqlalchemy.engine import Connection, Row
 
 from service.application.context import Service
-from service.application.facts import Moment, gather
+from service.application.facts import Moment, Register, gather
 from service.errors import Fault, NotAcceptableError, NotFoundError
 from service.records import bulk, journal
 from service.records.tables import Depot, Section
@@ -59,10 +59,13 @@ def present(row: Row[Any], now: datetime) -> Moment:
 
 
 def judge_sections(
-    connection: Connection, moment: Moment, sections: Sequence[str] | None
-) -> Iterable[tuple[SectionFacts, Status]]:
-    """Facts and status of sections, in order of name."""
-    for found in gather(connection, moment, sections):
+    connection: Connection,
+    moment: Moment,
+    sections: Sequence[str] | None,
+    known: Register | None = None,
+) -> Iterator[tuple[SectionFacts, Status]]:
+    """Facts and status of sections (None: all of the depot), in order of name."""
+    for found in gather(connection, moment, sections, known):
         yield found.facts, judge(found.facts, found.book, found.editions, moment.as_of)
 
 

@@ -87,6 +87,8 @@ class Finding(SQLModel, table=True):
     opened_on: date
     last_seen_on: date
     cleared_on: date | None = None
+    first_audit_on: date | None = None
+    """The audit that listed it first: `new` then, `open` afterwards."""
     reopens: str | None = name(null=True)
     concession: str | None = name(null=True)
     visit: str | None = name(null=True)
