@@ -12,9 +12,6 @@ from typing import Annotated, Any, Literal
 
 from pydantic import BaseModel, BeforeValidator, ConfigDict, Field, StringConstraints, TypeAdapter
 
-SCHEMA = 1
-"""The newest form of the text that is kept."""
-
 TEST_POINT_PATTERN = r"^(feed_end|relay_end|middle|leg:[A-Za-z0-9._()-]{1,40})$"
 TestPoint = Annotated[str, StringConstraints(pattern=TEST_POINT_PATTERN)]
 Text = Annotated[str, StringConstraints(pattern=r"^[^\x00-\x1f\x7f]{1,80}$")]
@@ -26,6 +23,8 @@ Metres = Annotated[float, Field(ge=0, le=1e5)]
 OhmKm = Annotated[float, Field(gt=0, le=1e6)]
 Ratio = Annotated[float, Field(gt=0, le=1e4)]
 Impedance = tuple[Ohms, Annotated[float, Field(ge=-1e6, le=1e6)]]
+SchemaNumber = Annotated[Literal[1], BeforeValidator(lambda given: 1 if given is None else given)]
+"""The form of the text that is kept; not stated, it is the newest."""
 
 
 class Part(BaseModel):
@@ -140,9 +139,7 @@ class SetUp(Part):
 class Common(Part):
     """What the equipment of every circuit kind has."""
 
-    schema_: Annotated[Literal[1], BeforeValidator(lambda given: SCHEMA if given is None else given)] = Field(
-        SCHEMA, alias="schema"
-    )
+    schema_: SchemaNumber = Field(1, alias="schema")
     feed: Feed | None = None
     line: Line | None = None
     bonds: Bonds | None = None
