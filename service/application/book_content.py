@@ -271,18 +271,18 @@ def unit_faults(content: Content) -> Iterator[BookFault]:
             for end in ("first", "last"):
                 if not _in_every_year(*_month_day(getattr(task.window, end))):
                     path = ("tasks", index, "window", end)
-                    yield BookFault(path, "unknown-day", "is not a day of every year")
+                    yield BookFault(path, "unknown_day", "is not a day of every year")
 
 
 def _unit_faults(path: tuple[str | int, ...], quantity: str, unit: str) -> Iterator[BookFault]:
     known = quantities.QUANTITIES.get(quantity)
     if known is None:
-        yield BookFault((*path, "quantity"), "unknown-quantity", "is not a quantity this service knows")
+        yield BookFault((*path, "quantity"), "unknown_quantity", "is not a quantity this service knows")
     if unit not in quantities.UNITS:
-        yield BookFault((*path, "unit"), "unknown-unit", "is not a unit this service knows")
+        yield BookFault((*path, "unit"), "unknown_unit", "is not a unit this service knows")
     elif known is not None and quantities.base_unit(unit) != known.unit:
         reason = f"is not a unit of {known.quantity}, which is in {known.unit}"
-        yield BookFault((*path, "unit"), "wrong-unit", reason)
+        yield BookFault((*path, "unit"), "wrong_unit", reason)
 
 
 def _applicability(applies: AppliesJson | None) -> Applicability:

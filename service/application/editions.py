@@ -62,7 +62,7 @@ def draft(tx: Transaction, new: Draft) -> EditionRecord:
     try:
         tx.connection.execute(sa.insert(_edition).values(values))
     except IntegrityError as error:
-        raise ConflictError("This book has an edition of that name already.", kind="exists") from error
+        raise ConflictError("This book has an edition of that name already.") from error
     return _told(tx, new.book, new.edition, "edition_drafted", ())
 
 
@@ -99,7 +99,7 @@ def issue(tx: Transaction, book: str, edition: str, effective_on: date, *, expec
         _edition.c.book == book, _edition.c.effective_on == effective_on
     )
     if tx.connection.execute(taken).first() is not None:
-        fault = Fault("day-taken", "another edition of this book takes effect on that day", "/effective_on")
+        fault = Fault("day_taken", "another edition of this book takes effect on that day", "/effective_on")
         raise NotAcceptableError("Two editions cannot take effect on one day.", (fault,))
     _checked(book, edition, Content.model_validate_json(row.content))
     _update(
@@ -177,13 +177,13 @@ def _locked(tx: Transaction, book: str, edition: str, expected: int) -> Row[Any]
 
 def _must_be(row: Row[Any], state: EditionState, otherwise: str) -> None:
     if row.state != state:
-        raise ConflictError(f"{otherwise} This one is {row.state}.", kind="edition-state")
+        raise ConflictError(f"{otherwise} This one is {row.state}.")
 
 
 def _must_be_later(now: datetime, day: date, pointer: str) -> None:
     if day <= (now + EARLIEST_ZONE).date():
         reason = "must be later than today in every time zone, so that no day that has begun is judged anew"
-        raise NotAcceptableError("The day is not late enough.", (Fault("not-a-later-day", reason, pointer),))
+        raise NotAcceptableError("The day is not late enough.", (Fault("not_a_later_day", reason, pointer),))
 
 
 def _update(tx: Transaction, row: Row[Any], **values: Any) -> None:
