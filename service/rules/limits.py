@@ -1,178 +1,154 @@
-"""Limit books as rules: limits, tasks, permitted combinations, editions.
+"""Which edition is in force on a day, and what of it applies to a section.
 
-Which of them apply to a section, and whether a book is consistent. Files and JSON are read
-elsewhere; verdicts are in `verdicts`.
+The types are laid in `editions` and the checks of a book in `consistency`; both are offered here
+too, as the one place to import limit books from. Files and JSON are read elsewhere.
 """
 
 from __future__ import annotations
 
-from dataclasses import dataclass, field
+from bisect import bisect_right
+from collections.abc import Collection, Iterable, Iterator
 from datetime import date
+from typing import TypeVar
 
-from service.rules.words import (
-    CircuitKind,
-    EditionState,
-    Hazard,
-    Place,
-    RelativeTo,
-    Sleepers,
-    Traction,
-    Work,
+from service.rules.editions import (
+    Applicability,
+    Applying,
+    BookFault,
+    Bound,
+    Bounds,
+    Combination,
+    Edition,
+    Limit,
+    Shortened,
+    Task,
+    YearlyWindow,
 )
+from service.rules.facts import SectionRecord
+from service.rules.words import EditionState
+
+__all__ = [
+    "Applicability",
+    "Applying",
+    "BookFault",
+    "Bound",
+    "Bounds",
+    "Combination",
+    "Edition",
+    "Limit",
+    "Shortened",
+    "Task",
+    "YearlyWindow",
+    "applying",
+    "in_force",
+    "next_change",
+]
 
 
-@dataclass(frozen=True, slots=True)
-class Bound:
-    """One side of a limit.
+def in_force(editions: Iterable[Edition], day: date) -> Edition | None:
+    """The edition in force on `day`: the last to take effect, unless withdrawn by then.
 
-    `value` is in the quantity's base unit, or a factor where the limit is relative;
-    `near_margin` is always in the base unit. A value exactly on the bound is inside.
+    A withdrawn edition does not bring the one before it back: that ended when this one was issued.
+    One withdrawn before it took effect never was in force.
     """
+    begun = [edition for edition in editions if _begins(edition, date.min, day)]
+    if not begun:
+        return None
+    newest = max(begun, key=lambda edition: (edition.effective_on, edition.edition))
+    return None if newest.withdrawn_on is not None and newest.withdrawn_on <= day else newest
 
-    value: float
-    hazard: Hazard
-    near_margin: float | None = None
+
+def next_change(editions: Iterable[Edition], day: date) -> date | None:
+    """The first day after `day` on which another edition, or none, is in force; None if never."""
+    editions = tuple(editions)
+    now = in_force(editions, day)
+    days = [edition.effective_on for edition in editions if _begins(edition, day, date.max)]
+    if now is not None and now.withdrawn_on is not None:
+        days.append(now.withdrawn_on)
+    return min((day for day in days if day is not None), default=None)
 
 
-@dataclass(frozen=True, slots=True)
-class Applicability:
-    """To which sections something applies; None means whatever the section has.
+def _begins(edition: Edition, after: date, until: date) -> bool:
+    """Whether it takes effect after one day and not after another, and is not withdrawn before that."""
+    effective, withdrawn = edition.effective_on, edition.withdrawn_on
+    if edition.state is EditionState.DRAFT or effective is None:
+        return False
+    if edition.state is EditionState.WITHDRAWN and withdrawn is None:
+        return False
+    return after < effective <= until and (withdrawn is None or effective < withdrawn)
 
-    Bands are [from, below), either end None for open.
+
+def applying(edition: Edition, record: SectionRecord) -> Applying:
+    """What of `edition` concerns the section, each with the attribute that the register lacks.
+
+    Something is left out only if the register says that it does not apply; where the register is
+    silent it stays, with the attribute's name. Worked out once for each distinct profile.
     """
-
-    circuit_kinds: frozenset[CircuitKind] | None = None
-    tractions: frozenset[Traction] | None = None
-    return_rails: frozenset[int] | None = None
-    places: frozenset[Place] | None = None
-    sleepers: frozenset[Sleepers] | None = None
-    relay_types: frozenset[str] | None = None
-    receivers: frozenset[int] | None = None
-    choke: bool | None = None
-    points: bool | None = None
-    """True: only sections with at least one points end; False: only plain line."""
-    length_from_m: float | None = None
-    length_below_m: float | None = None
-    catenary_from_a: float | None = None
-    catenary_below_a: float | None = None
+    profile = _profile(edition, record)
+    found = edition.profiles.get(profile)
+    if found is None:
+        found = Applying(
+            limits=tuple(_kept(edition.limits, record)),
+            tasks=tuple(_kept(edition.tasks, record)),
+            combinations=edition.combinations,
+        )
+        edition.profiles[profile] = found
+    return found
 
 
-@dataclass(frozen=True, slots=True)
-class Limit:
-    """One limit of an edition.
-
-    `test_points` None means all the section's required test points; `legs` in it stands for every
-    required `leg:…`. Empty for what is judged from the register. `ballast_dry`: a pass counts only when the
-    ballast was at its driest. `shunt_ohm`: the resistance across the rails the limit is stated for.
-    """
-
-    limit: str
-    quantity: str
-    minimum: Bound | None
-    maximum: Bound | None
-    clause: str
-    source: str
-    confirmed: bool
-    standing: str
-    test_points: tuple[str, ...] | None = None
-    relative_to: RelativeTo | None = None
-    ballast_dry: bool = False
-    shunt_ohm: float | None = None
-    applies: Applicability = Applicability()
-    title: str | None = None
+def _profile(edition: Edition, record: SectionRecord) -> tuple[object, ...]:
+    length, current, points = record.length_m, record.catenary_current_a, record.points_ends
+    return (
+        record.circuit_kind,
+        record.traction,
+        record.return_rails,
+        record.place,
+        record.sleepers,
+        record.relay_type,
+        record.receivers,
+        record.choke,
+        None if points is None else points > 0,
+        None if length is None else bisect_right(edition.length_cuts_m, length),
+        None if current is None else bisect_right(edition.catenary_cuts_a, current),
+    )
 
 
-@dataclass(frozen=True, slots=True)
-class YearlyWindow:
-    """A part of every year, as (month, day) of its first and last day, not across New Year."""
-
-    first: tuple[int, int]
-    last: tuple[int, int]
+Entry = TypeVar("Entry", Limit, Task)
 
 
-@dataclass(frozen=True, slots=True)
-class Shortened:
-    """A shorter interval that runs while a result is under a value (base unit)."""
-
-    quantity: str
-    under: float
-    interval: str
+def _kept(entries: Iterable[Entry], record: SectionRecord) -> Iterator[tuple[Entry, str | None]]:
+    for entry in entries:
+        answers = tuple(_answers(entry.applies, record))
+        if all(answer is not False for _, answer in answers):
+            yield entry, next((attribute for attribute, answer in answers if answer is None), None)
 
 
-@dataclass(frozen=True, slots=True)
-class Task:
-    """Something to be done at an interval. Durations are ISO 8601 (P3M, P4Y, P14D).
-
-    `needs` are quantities that must be read at every required test point for the task to be done
-    (quantities not tied to rails: anywhere in the visit, see `needs_anywhere`).
-    `after_work` makes it due at once after such work. `item` names the equipment item whose serial
-    the task runs with. `window` replaces the interval: once within each year's window.
-    """
-
-    task: str
-    clause: str
-    source: str
-    confirmed: bool
-    standing: str
-    interval: str | None = None
-    grace: str | None = None
-    window: YearlyWindow | None = None
-    needs: tuple[str, ...] = ()
-    needs_anywhere: tuple[str, ...] = ()
-    shortened: Shortened | None = None
-    after_work: frozenset[Work] = frozenset()
-    item: str | None = None
-    applies: Applicability = Applicability()
-    title: str | None = None
+def _answers(applies: Applicability, record: SectionRecord) -> Iterator[tuple[str, bool | None]]:
+    """Whether each attribute asked for fits; None where the register is silent."""
+    yield "circuit_kind", _among(record.circuit_kind, applies.circuit_kinds)
+    yield "traction", _among(record.traction, applies.tractions)
+    yield "return_rails", _among(record.return_rails, applies.return_rails)
+    yield "place", _among(record.place, applies.places)
+    yield "sleepers", _among(record.sleepers, applies.sleepers)
+    yield "relay_type", _among(record.relay_type, applies.relay_types)
+    yield "receivers", _among(record.receivers, applies.receivers)
+    yield "choke", _among(record.choke, None if applies.choke is None else {applies.choke})
+    points = None if record.points_ends is None else record.points_ends > 0
+    yield "points_ends", _among(points, None if applies.points is None else {applies.points})
+    yield "length_m", _between(record.length_m, applies.length_from_m, applies.length_below_m)
+    current = record.catenary_current_a
+    yield "catenary_current_a", _between(current, applies.catenary_from_a, applies.catenary_below_a)
 
 
-@dataclass(frozen=True, slots=True)
-class Combination:
-    """A circuit kind permitted under a traction; `return_rails` None means any number."""
-
-    circuit_kind: CircuitKind
-    traction: Traction
-    return_rails: frozenset[int] | None
-    clause: str
-    source: str
-    confirmed: bool
-    standing: str
+def _among(value: object, wanted: Collection[object] | None) -> bool | None:
+    if wanted is None:
+        return True
+    return None if value is None else value in wanted
 
 
-@dataclass(frozen=True, slots=True)
-class Edition:
-    """One edition of a limit book. With no combinations, every combination is permitted.
-
-    In force from `effective_on` until the day before `withdrawn_on` or the next issued edition.
-    """
-
-    book: str
-    edition: str
-    state: EditionState
-    effective_on: date | None
-    withdrawn_on: date | None
-    digest: str
-    limits: tuple[Limit, ...]
-    tasks: tuple[Task, ...]
-    combinations: tuple[Combination, ...] = ()
-    title: str | None = None
-    dry_ballast_ohm_km: float | None = None
-    """What the book takes for the driest ballast; None is infinite."""
-
-
-@dataclass(frozen=True, slots=True)
-class BookFault:
-    """One fault in a book: where (`("limits", 3, "minimum")`), a code and why."""
-
-    path: tuple[str | int, ...]
-    code: str
-    reason: str
-
-
-@dataclass(frozen=True, slots=True)
-class Applying:
-    """What of an edition concerns one section; `missing` names an attribute the register lacks."""
-
-    limits: tuple[tuple[Limit, str | None], ...]
-    tasks: tuple[tuple[Task, str | None], ...]
-    combinations: tuple[Combination, ...] = field(default=())
+def _between(value: float | None, start: float | None, below: float | None) -> bool | None:
+    if start is None and below is None:
+        return True
+    if value is None:
+        return None
+    return (start is None or value >= start) and (below is None or value < below)

@@ -7,6 +7,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 from decimal import Decimal
+from functools import lru_cache
 from types import MappingProxyType
 
 UNITS = MappingProxyType(
@@ -37,7 +38,8 @@ class Quantity:
 
     `from_register` marks what is judged from the section's record, never from a reading;
     `shunt` what is measured with a resistance across the rails; `steps_up` says which way a
-    stepped box leaves the true value (+1 above the reading, −1 below, 0 no box).
+    stepped box leaves the true value (+1 above the reading, −1 below, 0 no box). `of_item` marks
+    what is measured on an item or a cable, so that work on the track leaves it standing.
     """
 
     quantity: str
@@ -49,6 +51,7 @@ class Quantity:
     wetness_matters: bool = False
     needs_shunt: bool = False
     steps_up: int = 0
+    of_item: bool = False
 
 
 def _quantities() -> tuple[Quantity, ...]:
@@ -67,12 +70,12 @@ def _quantities() -> tuple[Quantity, ...]:
         Quantity("feed_current", "Feed current", "A", *amps),
         Quantity("local_voltage", "Local winding voltage", "V", *volts),
         Quantity("phase_angle", "Angle between control and local", "deg", -180.0, 180.0),
-        Quantity("relay_pick_up_voltage", "Relay pick-up voltage", "V", *volts),
-        Quantity("relay_drop_away_voltage", "Relay drop-away voltage", "V", *volts),
-        Quantity("relay_pick_up_current", "Relay pick-up current", "A", *amps),
-        Quantity("relay_drop_away_current", "Relay drop-away current", "A", *amps),
+        Quantity("relay_pick_up_voltage", "Relay pick-up voltage", "V", *volts, of_item=True),
+        Quantity("relay_drop_away_voltage", "Relay drop-away voltage", "V", *volts, of_item=True),
+        Quantity("relay_pick_up_current", "Relay pick-up current", "A", *amps, of_item=True),
+        Quantity("relay_drop_away_current", "Relay drop-away current", "A", *amps, of_item=True),
         Quantity("ballast_resistance", "Ballast resistance", "Ohm.km", 0.0, 1e5),
-        Quantity("insulation_resistance", "Insulation resistance", "Ohm", 0.0, 1e12),
+        Quantity("insulation_resistance", "Insulation resistance", "Ohm", 0.0, 1e12, of_item=True),
         Quantity("joint_resistance", "Insulated joint resistance", "Ohm", 0.0, 1e9),
         Quantity("bond_resistance", "Bond resistance", "Ohm", 0.0, 1e4),
         Quantity("feed_resistance", "Feed resistance", "Ohm", 0.0, 1e4),
@@ -86,7 +89,9 @@ def _quantities() -> tuple[Quantity, ...]:
         Quantity("length", "Length", "m", 0.0, 1e5, from_register=True),
         Quantity("points_ends", "Point ends", "1", 0.0, 100.0, from_register=True),
         Quantity("insulated_joints", "Insulated joints", "1", 0.0, 1000.0, from_register=True),
-        Quantity("parallel_bonded_length", "Longest parallel-bonded length", "m", 0.0, 1e5, from_register=True),
+        Quantity(
+            "parallel_bonded_length", "Longest parallel-bonded length", "m", 0.0, 1e5, from_register=True
+        ),
         Quantity("interrupter", "Interrupter fitted where required", "1", 0.0, 1.0, from_register=True),
         Quantity("bonds_duplicated", "Parallel bonds duplicated", "1", 0.0, 1.0, from_register=True),
         Quantity("circuit_kind_permitted", "Circuit kind permitted", "1", 0.0, 1.0, from_register=True),
@@ -106,6 +111,7 @@ def exact(value: float) -> Decimal:
     return Decimal(repr(value))
 
 
+@lru_cache(maxsize=1 << 14)
 def difference(a: float, b: float) -> float:
     """`a − b` in decimal, rounded once.
 
@@ -115,6 +121,16 @@ def difference(a: float, b: float) -> float:
     0.1
     """
     return float(exact(a) - exact(b))
+
+
+@lru_cache(maxsize=1 << 14)
+def total(a: float, b: float) -> float:
+    """`a + b` in decimal, rounded once.
+
+    >>> total(0.1, 0.2)
+    0.3
+    """
+    return float(exact(a) + exact(b))
 
 
 def product(a: float, b: float) -> float:

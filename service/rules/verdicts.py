@@ -1,25 +1,45 @@
-"""One limit against one section: what was measured, the limit, the margin, and why."""
+"""One limit against one section: what was measured, the limit, the margin, and why.
+
+Judges readings and register values against the bounds of the limits that apply. Which limits apply
+is in `limits`, how readings stand to one another in `evidence`, the whole section in `status`.
+"""
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass, replace
 from datetime import datetime
 
-from service.rules.words import Comparison, Hazard, Stage, VerdictWord
+from service.rules.bounds import OPEN, Weighed, resolve, weigh, wrong_side
+from service.rules.editions import Bound, Bounds, Edition, Limit
+from service.rules.evidence import Evidence
+from service.rules.facts import Concession, Instrument, Reading, SectionFacts, SectionRecord, Visit
+from service.rules.limits import applying
+from service.rules.proof import DRIEST, bounds_at, covers, lacking, named, open_failure
+from service.rules.quantities import QUANTITIES
+from service.rules.register import Registered, permission, registered
+from service.rules.words import Comparison, Hazard, Reason, Stage, VerdictWord
+
+__all__ = ["Reason", "Verdict", "found_outside", "judge_combination", "judge_limit"]
+
+OUTSIDE, UNPROVEN, NOT_MEASURED = VerdictWord.OUTSIDE, VerdictWord.UNPROVEN, VerdictWord.NOT_MEASURED
+
+PERMITTED = "circuit_kind_permitted"
+
+BEYOND_CONCESSION = Reason("beyond_concession", "outside what the concession allows too")
+
+Concessions = Mapping[str, Sequence[Concession]]
+"""Live concessions by limit."""
 
 
-@dataclass(frozen=True, slots=True)
-class Reason:
-    code: str
-    reason: str
-
-
-@dataclass(frozen=True, slots=True)
+@dataclass(slots=True, unsafe_hash=True)
 class Verdict:
     """As on the wire (contract, "Answers"). Values in the quantity's base unit.
 
     `hazard` is that of the bound that decides (the one exceeded, else the one with the smaller
-    margin); `margin` is positive inside; None where nothing could be judged.
+    margin); `margin` is positive inside; None where nothing could be judged. Never changed once
+    made: not declared frozen only because making frozen ones takes ten times as long, and an audit
+    makes millions.
     """
 
     limit: str
@@ -47,3 +67,255 @@ class Verdict:
     instrument: str | None
     doubtful: str | None
     reasons: tuple[Reason, ...] = ()
+
+
+def judge_limit(
+    edition: Edition, limit: Limit, missing: str | None, evidence: Evidence, concessions: Concessions
+) -> list[Verdict]:
+    """The verdicts of one limit that applies: one for each test point, or each register value.
+
+    `missing` is the attribute without which it cannot be said that the limit applies. Where the
+    limit is for all required test points, others that were read are judged too, but only condemn.
+    """
+    if QUANTITIES[limit.quantity].from_register:
+        values = registered(evidence.record, limit.quantity)
+        return [_of_register(edition, limit, missing, one, concessions) for one in values]
+    required = evidence.record.required_test_points
+    points: tuple[str | None, ...] = required
+    lacks = missing
+    if limit.test_points is not None:
+        points = named(limit.test_points, required)
+    elif not required:
+        points, lacks = (None,), missing or "required_test_points"
+    found = [_at(edition, limit, lacks, point, evidence, concessions) for point in points]
+    if missing is None and limit.test_points is None:
+        others = [point for point in evidence.points.get(limit.quantity, ()) if point not in required]
+        judged = [_of_series(edition, limit, point, evidence, concessions) for point in others]
+        found += [verdict for verdict in judged if verdict.verdict is OUTSIDE]
+    return found
+
+
+def _at(
+    edition: Edition,
+    limit: Limit,
+    missing: str | None,
+    point: str | None,
+    evidence: Evidence,
+    concessions: Concessions,
+) -> Verdict:
+    if missing is not None or point is None:
+        return _unread(edition, limit, point, UNPROVEN, (_attribute_missing(missing),))
+    if (limit.quantity, point) not in evidence.series:
+        return _unread(edition, limit, point, NOT_MEASURED, ())
+    return _of_series(edition, limit, point, evidence, concessions)
+
+
+def _attribute_missing(attribute: str | None) -> Reason:
+    return Reason("attribute_missing", f"the register does not say: {attribute}")
+
+
+def _of_series(
+    edition: Edition, limit: Limit, point: str, evidence: Evidence, concessions: Concessions
+) -> Verdict:
+    """The verdict at a test point that was read: by its newest reading, and what lies open before it."""
+    quantity = QUANTITIES[limit.quantity]
+    series = evidence.series[limit.quantity, point]
+    order, reading = series[-1]
+    bounds, doubt = bounds_at(limit, point, evidence)
+    span = evidence.span(order, reading)
+    weighed = weigh(*span, bounds)
+    word, hazard = weighed.word, weighed.hazard
+    stale = None if quantity.of_item else evidence.stale(order)
+    reasons: tuple[Reason, ...]
+    if stale is not None:
+        word, reasons = UNPROVEN, (stale,)
+    else:
+        reasons = lacking(word, limit, order, reading, evidence)
+        if doubt is not None:
+            reasons = (*reasons, doubt)
+        if reasons and word is not OUTSIDE:
+            word = UNPROVEN
+        if quantity.wetness_matters and _may_hide_failure(word, hazard, evidence.visit(order)):
+            failure = open_failure(series, limit, bounds, evidence)
+            if failure is not None:
+                word, hazard, span = OUTSIDE, Hazard.WRONG_SIDE, evidence.span(*failure)
+                reasons = (_not_repeated_dry(failure, evidence), *reasons)
+    verdict = _of_reading(edition, limit, bounds, evidence.visit(order), reading, weighed)
+    verdict.verdict, verdict.hazard, verdict.reasons = word, hazard, reasons
+    if word is OUTSIDE and limit.limit in concessions:
+        _concede(verdict, span, concessions[limit.limit])
+    return verdict
+
+
+def _may_hide_failure(word: VerdictWord, hazard: Hazard | None, visit: Visit) -> bool:
+    """Not if it is outside on the wrong side itself, nor if it passes in the driest: that clears all."""
+    if word is OUTSIDE:
+        return hazard is not Hazard.WRONG_SIDE
+    return word is UNPROVEN or visit.ballast not in DRIEST
+
+
+def _not_repeated_dry(failure: tuple[int, Reading], evidence: Evidence) -> Reason:
+    visit = evidence.visit(failure[0])
+    ballast = "unknown" if visit.ballast is None else visit.ballast.value
+    return Reason(
+        "not_repeated_dry",
+        f"outside on {visit.visited_on} in {ballast} ballast, and not since shown inside in ballast as dry",
+    )
+
+
+def _concede(verdict: Verdict, span: tuple[float, float], concessions: Sequence[Concession]) -> None:
+    """Name the concession that the interval judged keeps to, else say that it goes beyond one."""
+    beyond = False
+    for concession in concessions:
+        if concession.test_point is not None and concession.test_point != verdict.test_point:
+            continue
+        least, most = concession.allowed_min, concession.allowed_max
+        if (least is None or span[0] >= least) and (most is None or span[1] <= most):
+            verdict.concession = concession.concession
+            return
+        beyond = True
+    if beyond:
+        verdict.reasons = (
+            *verdict.reasons,
+            Reason("beyond_concession", "outside what the concession allows"),
+        )
+
+
+def _of_reading(
+    edition: Edition, limit: Limit, bounds: Bounds, visit: Visit, reading: Reading, weighed: Weighed
+) -> Verdict:
+    word, hazard, judged, margin = weighed
+    return Verdict(
+        limit.limit,
+        limit.quantity,
+        reading.test_point,
+        word,
+        hazard,
+        QUANTITIES[limit.quantity].unit,
+        reading.value,
+        reading.comparison,
+        judged,
+        bounds.min,
+        bounds.near_min,
+        bounds.near_max,
+        bounds.max,
+        margin,
+        edition.book,
+        edition.edition,
+        limit.clause,
+        limit.confirmed,
+        None,
+        visit.visit,
+        visit.visited_at,
+        reading.stage,
+        reading.instrument,
+        reading.doubtful,
+    )
+
+
+def _unread(
+    edition: Edition,
+    limit: Limit,
+    point: str | None,
+    word: VerdictWord,
+    reasons: tuple[Reason, ...],
+    value: float | None = None,
+) -> Verdict:
+    """A verdict that rests on no reading: nothing was read, or the register has the value."""
+    bounds = OPEN if limit.relative_to is not None else resolve(limit, None)
+    judged = weigh(value, value, bounds) if value is not None else Weighed(word, None, None, None)
+    return Verdict(
+        limit=limit.limit,
+        quantity=limit.quantity,
+        test_point=point,
+        verdict=judged.word,
+        hazard=judged.hazard,
+        unit=QUANTITIES[limit.quantity].unit,
+        measured=value,
+        comparison=None,
+        judged=judged.judged,
+        min=bounds.min,
+        near_min=bounds.near_min,
+        near_max=bounds.near_max,
+        max=bounds.max,
+        margin=judged.margin,
+        book=edition.book,
+        edition=edition.edition,
+        clause=limit.clause,
+        confirmed=limit.confirmed,
+        concession=None,
+        visit=None,
+        visited_at=None,
+        stage=None,
+        instrument=None,
+        doubtful=None,
+        reasons=reasons,
+    )
+
+
+def _of_register(
+    edition: Edition, limit: Limit, missing: str | None, found: Registered, concessions: Concessions
+) -> Verdict:
+    point, value, attribute = found
+    if missing is not None or value is None:
+        return _unread(edition, limit, point, UNPROVEN, (_attribute_missing(missing or attribute),))
+    verdict = _unread(edition, limit, point, UNPROVEN, (), value)
+    if verdict.verdict is OUTSIDE and limit.limit in concessions:
+        _concede(verdict, (value, value), concessions[limit.limit])
+    return verdict
+
+
+def judge_combination(edition: Edition, record: SectionRecord, concessions: Concessions) -> Verdict | None:
+    """Whether the book permits the circuit kind under the traction; None if it names no combinations."""
+    if not edition.combinations:
+        return None
+    permitted, by = permission(record, edition.combinations)
+    limit = Limit(
+        limit=PERMITTED,
+        quantity=PERMITTED,
+        minimum=Bound(1.0, Hazard.WRONG_SIDE),
+        maximum=None,
+        clause="; ".join(dict.fromkeys(one.clause for one in by)),
+        source="",
+        confirmed=all(one.confirmed for one in by),
+        standing="",
+    )
+    if permitted is None:
+        return _unread(edition, limit, None, UNPROVEN, (_attribute_missing("return_rails"),))
+    verdict = _unread(edition, limit, None, UNPROVEN, (), float(permitted))
+    if not permitted:
+        text = f"{record.circuit_kind} under {record.traction} is not among the book's permitted combinations"
+        verdict.reasons = (Reason("combination_not_permitted", text),)
+        _concede(verdict, (0.0, 0.0), concessions.get(PERMITTED, ()))
+    return verdict
+
+
+def found_outside(
+    record: SectionRecord,
+    edition: Edition,
+    visit: Visit,
+    readings: Sequence[Reading],
+    instruments: Mapping[str, Instrument],
+) -> tuple[Verdict, ...]:
+    """Every reading of one visit, as found or as left, that is outside a wrong-side bound in force then.
+
+    Rests on the visit and on the record and edition valid that day, and on nothing else; a
+    reading that cannot be relied on condemns all the same. `stage` tells as found from as left.
+    """
+    facts = SectionFacts(record, (replace(visit, voided=False),), tuple(readings), instruments, ())
+    evidence = Evidence(facts, visit.visited_on)
+    found = []
+    for limit, missing in applying(edition, record).limits:
+        if missing is not None:
+            continue
+        for point in evidence.points.get(limit.quantity, ()):
+            if not covers(limit, point, record.required_test_points):
+                continue
+            bounds = bounds_at(limit, point, evidence)[0]
+            for order, reading in evidence.series[limit.quantity, point]:
+                weighed = weigh(*evidence.span(order, reading), wrong_side(bounds))
+                if weighed.word is OUTSIDE:
+                    verdict = _of_reading(edition, limit, bounds, visit, reading, weighed)
+                    verdict.reasons = lacking(OUTSIDE, limit, order, reading, evidence)
+                    found.append(verdict)
+    return tuple(found)

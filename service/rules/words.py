@@ -1,12 +1,21 @@
 """The closed and open sets of words that rules, tables and the wire share.
 
 One enumeration a set; the values are the wire's spelling. Nothing is computed here except the
-orders the words carry (gravity of verdicts, dryness of ballast).
+orders the words carry (gravity of verdicts, dryness of ballast). Reasons carry words of an open set.
 """
 
 from __future__ import annotations
 
+from dataclasses import dataclass
 from enum import StrEnum
+
+
+@dataclass(frozen=True, slots=True)
+class Reason:
+    """Why something is as it is: a stable code (an open set) and a sentence for a person."""
+
+    code: str
+    reason: str
 
 
 class CircuitKind(StrEnum):
@@ -87,7 +96,10 @@ class Ballast(StrEnum):
     @property
     def wetness(self) -> int:
         """0 for the driest (dry, frozen) to 3 (flooded)."""
-        return {"dry": 0, "frozen": 0, "damp": 1, "wet": 2, "flooded": 3}[self.value]
+        return _WETNESS[self]
+
+
+_WETNESS = {Ballast.DRY: 0, Ballast.FROZEN: 0, Ballast.DAMP: 1, Ballast.WET: 2, Ballast.FLOODED: 3}
 
 
 class BallastState(StrEnum):
@@ -167,7 +179,10 @@ class VerdictWord(StrEnum):
     @property
     def gravity(self) -> int:
         """0 for the gravest."""
-        return list(VerdictWord).index(self)
+        return _GRAVITY[self]
+
+
+_GRAVITY = {word: gravity for gravity, word in enumerate(VerdictWord)}
 
 
 class Compliance(StrEnum):
