@@ -43,8 +43,8 @@ LAST = (99,)
 """Sorts after every finding: sections listed only because they are not judged."""
 
 CAUTION = (
-    "Advice from records, not an authority to work or to run trains: the railway's own rules and a competent, "
-    "licensed person decide. What was not measured is not shown to be safe."
+    "Advice from records, not an authority to work or to run trains: the railway's own rules and a "
+    "competent, licensed person decide. What was not measured is not shown to be safe."
 )
 """Stands at the head of every weekly list."""
 
@@ -70,8 +70,8 @@ class _Survey:
 def run(service: Service, actor: Actor, depot: str, as_of: date | None = None) -> Row[Any]:
     """Audit a depot as of a date (default: its today) and return the audit's row.
 
-    The same date again gives the stored audit. Raises NotAcceptableError for a date in the future, ConflictError for
-    one before the last audit's.
+    The same date again gives the stored audit. Raises NotAcceptableError for a date in the future,
+    ConflictError for one before the last audit's.
     """
     now = service.clock()
     with service.read(snapshot=True) as connection:
@@ -97,11 +97,13 @@ def _stored_or_refused(connection: Connection, depot: str, on: date, today: date
     query = sa.select(_audit).where(_audit.c.depot == depot, _audit.c.audit == on)
     stored = connection.execute(query).one_or_none()
     if stored is None:
-        last = connection.execute(sa.select(sa.func.max(_audit.c.audit)).where(_audit.c.depot == depot)).scalar()
+        last = connection.execute(
+            sa.select(sa.func.max(_audit.c.audit)).where(_audit.c.depot == depot)
+        ).scalar()
         if last is not None and on < last:
             raise ConflictError(
                 "A later audit is stored: audits go forward, since findings persist from one to the next.",
-                (Fault("before-last-audit", "lies before the last audit", "/as_of"),),
+                (Fault("before_last_audit", "lies before the last audit", "/as_of"),),
                 kind="before-last-audit",
             )
     return stored
@@ -169,11 +171,15 @@ def _keep(tx: Transaction, survey: _Survey, started_at: datetime) -> None:
     depot, on = survey.moment.depot, survey.moment.as_of
     before = findings.open_rows(tx.connection, depot)
     cleared = [
-        row for name, row in before.items() if name not in survey.seeds and row.kind != FindingKind.FOUND_OUTSIDE
+        row
+        for name, row in before.items()
+        if name not in survey.seeds and row.kind != FindingKind.FOUND_OUTSIDE
     ]
     new = {name: seed for name, seed in survey.seeds.items() if name not in before}
     opened = findings.new_rows(tx, depot, new, on, on)
-    seen = [row for name, row in before.items() if row.kind == FindingKind.FOUND_OUTSIDE or name in survey.seeds]
+    seen = [
+        row for name, row in before.items() if row.kind == FindingKind.FOUND_OUTSIDE or name in survey.seeds
+    ]
     _clear(tx, depot, cleared, on)
     _see(tx, depot, seen, survey)
     bulk.insert(tx.connection, _finding, opened)
@@ -340,7 +346,9 @@ def weekly_list(connection: Connection, depot: str, on: date | None) -> WeeklyLi
 def due(connection: Connection, now: datetime) -> list[tuple[str, date]]:
     """Depots whose weekly hour has passed without its audit, with the day it is due as of."""
     last = dict(
-        connection.execute(sa.select(_audit.c.depot, sa.func.max(_audit.c.audit)).group_by(_audit.c.depot)).all()
+        connection.execute(
+            sa.select(_audit.c.depot, sa.func.max(_audit.c.audit)).group_by(_audit.c.depot)
+        ).all()
     )
     found = []
     for row in connection.execute(sa.select(_depot).order_by(_depot.c.depot)):

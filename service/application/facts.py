@@ -19,7 +19,7 @@ from zoneinfo import ZoneInfo
 import sqlalchemy as sa
 from sqlalchemy.engine import Connection, Row
 
-from service.application import books, sections
+from service.application import books, section_records
 from service.records.tables import (
     CalibrationRow,
     Concession,
@@ -87,10 +87,7 @@ class Moment:
 
 def version_on(versions: Sequence[Row[Any]], day: date) -> Row[Any] | None:
     """The record in force on a day: the highest version that holds from then or earlier."""
-    for row in reversed(versions):
-        if row.valid_from_on <= day:
-            return row
-    return None
+    return next((row for row in reversed(versions) if row.valid_from_on <= day), None)
 
 
 def returned_on(versions: Sequence[Row[Any]], day: date) -> date | None:
@@ -117,7 +114,7 @@ class Register:
 
     def record(self, row: Row[Any], day: date) -> rules.SectionRecord:
         """The record of a version, without its neighbours."""
-        return sections.record(row, returned_on(self.versions[row.section], day), {})
+        return section_records.record(row, returned_on(self.versions[row.section], day), {})
 
 
 def register(
@@ -176,7 +173,7 @@ def _gather_chunk(
         later = [version.valid_from_on for version in rows if version.valid_from_on > moment.as_of]
         yield Gathered(
             rules.SectionFacts(
-                record=sections.record(row, returned_on(rows, moment.as_of), polarities.get(name, {})),
+                record=section_records.record(row, returned_on(rows, moment.as_of), polarities.get(name, {})),
                 visits=tuple(visits.get(name, ())),
                 readings=tuple(readings.get(name, ())),
                 instruments=instruments,
@@ -251,7 +248,9 @@ def _work(text: str) -> frozenset[Work]:
     return frozenset(Work(word) for word in json.loads(text))
 
 
-def visit_of(row: Mapping[str, Any] | Row[Any], time_zone: ZoneInfo, voided: bool) -> rules.Visit:
+def visit_of(
+    row: Mapping[str, Any] | Row[*tuple[Any, ...]], time_zone: ZoneInfo, voided: bool
+) -> rules.Visit:
     """The rule object of a row of `visit`."""
     values = row if isinstance(row, Mapping) else row._mapping
     return rules.Visit(

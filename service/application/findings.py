@@ -194,11 +194,12 @@ def page(
 
 def respond(
     tx: Transaction, depot: str, finding: str, response: Mapping[str, Any], expected_version: int
-) -> Row[Any]:
+) -> tuple[date, Row[Any]]:
     """Keep a response; a `found_outside` whose response says all of `CLEARING` is cleared.
 
-    `response` has the members of `RESPONSE`, instants and days as values. Raises StaleError when the
-    finding has another version, NotAcceptableError for a report before the finding or in the future.
+    Returns the depot's day and the finding as it is then. `response` has the members of `RESPONSE`,
+    instants and days as values. Raises StaleError when the finding has another version,
+    NotAcceptableError for a report in the future.
     """
     depot_row = tx.lock_depot(depot)
     section = get(tx.connection, depot, finding).section
@@ -228,4 +229,4 @@ def respond(
     after = get(tx.connection, depot, finding)
     entry = journal.Entry("finding.answered", "finding", finding, (section,), wire(after, today))
     tx.append(depot, [entry])
-    return after
+    return today, after

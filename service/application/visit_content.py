@@ -72,7 +72,17 @@ class Draft:
 
 _CONDITIONS = ("ballast", "ballast_state", "rail", "air_temperature_c")
 _PLAIN = ("device", "tester", "condition_left", "remarks", "replaces", "pack")
-_READING = ("quantity", "test_point", "stage", "comparison", "value", "unit", "instrument", "shunt_ohm", "source")
+_READING = (
+    "quantity",
+    "test_point",
+    "stage",
+    "comparison",
+    "value",
+    "unit",
+    "instrument",
+    "shunt_ohm",
+    "source",
+)
 
 
 def _stated(values: Mapping[str, Any]) -> dict[str, Any]:
@@ -127,9 +137,9 @@ def faults(draft: Draft, now: datetime) -> list[Fault]:
     found: list[Fault] = []
     if draft.visited_at > now + AHEAD:
         reason = f"lies in the future: the server's time is {instant_text(now)}"
-        found.append(Fault("visit-in-the-future", reason, "/visited_at"))
+        found.append(Fault("in_the_future", reason, "/visited_at"))
     if draft.replaces == draft.visit:
-        found.append(Fault("replaces-itself", "a visit cannot replace itself", "/replaces"))
+        found.append(Fault("replaces_itself", "a visit cannot replace itself", "/replaces"))
     found.extend(_repeated("tasks", "task", [task.task for task in draft.tasks]))
     found.extend(_repeated("work_done", "work", list(draft.work_done)))
     keys = [(reading.quantity, reading.test_point, reading.stage) for reading in draft.readings]
@@ -150,34 +160,42 @@ def _repeated(member: str, what: str, keys: list[Any]) -> Iterator[Fault]:
 def _reading_faults(reading: ReadingDraft, at: str) -> Iterator[Fault]:
     quantity = QUANTITIES.get(reading.quantity)
     if quantity is None:
-        yield Fault("unknown-quantity", "this service knows no such quantity: see /v1/quantities", f"{at}/quantity")
+        yield Fault(
+            "unknown_quantity", "this service knows no such quantity: see /v1/quantities", f"{at}/quantity"
+        )
         return
     if quantity.from_register:
-        yield Fault("not-a-reading", "comes from the section's record, not from a reading", f"{at}/quantity")
+        yield Fault("not_a_reading", "comes from the section's record, not from a reading", f"{at}/quantity")
     if not TEST_POINT.fullmatch(reading.test_point):
         reason = "a test point is feed_end, relay_end, middle or leg:<name>"
-        yield Fault("unknown-test-point", reason, f"{at}/test_point")
+        yield Fault("unknown_test_point", reason, f"{at}/test_point")
     yield from _shunt_faults(reading, quantity.needs_shunt, at)
     if reading.unit not in UNITS:
-        yield Fault("unknown-unit", "not a unit of this service: see /v1/quantities", f"{at}/unit")
+        yield Fault("unknown_unit", "not a unit of this service: see /v1/quantities", f"{at}/unit")
     elif base_unit(reading.unit) != quantity.unit:
-        yield Fault("wrong-unit", f"{reading.quantity} is given in {quantity.unit} or a multiple of it", f"{at}/unit")
+        yield Fault(
+            "wrong_unit", f"{reading.quantity} is given in {quantity.unit} or a multiple of it", f"{at}/unit"
+        )
     elif not quantity.lowest <= to_base(reading.value, reading.unit) <= quantity.highest:
-        reason = f"{reading.quantity} lies between {quantity.lowest:g} and {quantity.highest:g} {quantity.unit}"
-        yield Fault("absurd-value", reason, f"{at}/value")
+        reason = (
+            f"{reading.quantity} lies between {quantity.lowest:g} and {quantity.highest:g} {quantity.unit}"
+        )
+        yield Fault("absurd_value", reason, f"{at}/value")
 
 
 def _shunt_faults(reading: ReadingDraft, needs_shunt: bool, at: str) -> Iterator[Fault]:
     if not needs_shunt:
         for member in ("shunt_ohm", "source"):
             if getattr(reading, member) is not None:
-                yield Fault("not-a-residual", "only goes with a residual reading", f"{at}/{member}")
+                yield Fault("not_a_residual", "only goes with a residual reading", f"{at}/{member}")
         return
     if reading.source is None:
-        yield Fault("missing", "a residual reading says whether a shunt or a train was on the track", f"{at}/source")
+        yield Fault(
+            "missing", "a residual reading says whether a shunt or a train was on the track", f"{at}/source"
+        )
     elif reading.source == Source.SHUNT and reading.shunt_ohm is None:
         yield Fault("missing", "a residual under a shunt names the shunt's resistance", f"{at}/shunt_ohm")
     elif reading.source == Source.TRAIN and reading.shunt_ohm is not None:
-        yield Fault("not-a-shunt", "a train has no stated resistance", f"{at}/shunt_ohm")
+        yield Fault("not_a_shunt", "a train has no stated resistance", f"{at}/shunt_ohm")
     if reading.shunt_ohm is not None and not 0 <= reading.shunt_ohm <= 1000:
-        yield Fault("absurd-value", "a test shunt lies between 0 and 1000 Ohm", f"{at}/shunt_ohm")
+        yield Fault("absurd_value", "a test shunt lies between 0 and 1000 Ohm", f"{at}/shunt_ohm")

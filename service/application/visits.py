@@ -1,13 +1,12 @@
-"""Take visits from handhelds: store them once, say what they show, void and read them.
+"""Take visits from handhelds: store them once, say what they show, void them.
 
-One visit is a batch of one. What a visit says by itself is in `visit_content`; what it proves is judged
-in `rules`.
+One visit is a batch of one. What a visit says by itself is in `visit_content`, reading them again in
+`visit_records`; what they prove is judged in `rules`.
 """
 
 from __future__ import annotations
 
 import json
-from collections import defaultdict
 from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass, field, replace
 from datetime import datetime
@@ -17,8 +16,8 @@ from zoneinfo import ZoneInfo
 import sqlalchemy as sa
 from sqlalchemy.engine import Connection, Row
 
-from service.application import facts, findings, status, visit_content
-from service.application.visit_content import Draft, ReadingDraft, TaskDraft
+from service.application import facts, findings, status, visit_content, visit_records
+from service.application.visit_content import Draft
 from service.errors import (
     ConflictError,
     Fault,
@@ -157,9 +156,9 @@ def _decide(
 
 def _other_content(stored_digest: str) -> ConflictError:
     return ConflictError(
-        "A visit with this id is stored with other content. A correction is a visit of its own that replaces it.",
-        (Fault("other-content", "this id is taken by another visit", "/visit"),),
-        kind="visit-differs",
+        "A visit with this id is stored with other content; a correction is a visit that replaces it.",
+        (Fault("other_content", "this id is taken by another visit", "/visit"),),
+        kind="id-reused",
         stored_digest=stored_digest,
     )
 
@@ -173,17 +172,17 @@ def _refusal(
     time_zone: str,
 ) -> ShuntbookError | None:
     if tx.actor.device is not None and draft.device != tx.actor.device:
-        fault = Fault("other-device", "this key posts only as the device it is bound to", "/device")
+        fault = Fault("other_device", "this key posts only as the device it is bound to", "/device")
         return ForbiddenError("The key belongs to another device.", (fault,))
     faults = visit_content.faults(draft, tx.now)
     versions = register.versions.get(draft.section)
     if not versions:
-        faults.append(Fault("unknown-section", "this depot has no such section", "/section"))
+        faults.append(Fault("unknown_section", "this depot has no such section", "/section"))
     else:
         day = draft.visited_at.astimezone(ZoneInfo(time_zone)).date()
         record = facts.version_on(versions, day) or versions[0]
         if record.state == SectionState.RECOVERED:
-            faults.append(Fault("recovered-section", "the section had been recovered by then", "/section"))
+            faults.append(Fault("recovered_section", "the section had been recovered by then", "/section"))
     if draft.replaces is not None and draft.replaces != draft.visit:
         faults.extend(_replaces_faults(draft, known, accepted))
         replaced = known.get(draft.replaces)
@@ -204,8 +203,8 @@ def _refusal(
 def _second_holder(pointer: str | None) -> ConflictError:
     reason = "the visit found the section outside a wrong-side limit: another holder has to do this"
     return ConflictError(
-        "A visit that found a section outside a wrong-side limit is voided or replaced by a second holder only.",
-        (Fault("second-holder", reason, pointer),),
+        "A visit that found a wrong-side failure is voided or replaced by a second holder only.",
+        (Fault("second_holder", reason, pointer),),
         kind="second-holder",
     )
 
@@ -221,12 +220,12 @@ def _replaces_faults(
     target = sections_and_next(draft.replaces or "")
     if target is not None and target[0] != draft.section:
         reason = "names a visit of another section: one at the wrong section is voided instead"
-        yield Fault("other-section", reason, "/replaces")
+        yield Fault("other_section", reason, "/replaces")
     # A longer cycle needs a stored visit that replaces this one, and that one is in `known`.
     here, steps = draft.replaces, 0
     while here is not None and steps <= len(known) + len(accepted):
         if here == draft.visit:
-            yield Fault("replaces-cycle", "the visits would replace each other in a circle", "/replaces")
+            yield Fault("replaces_cycle", "the visits would replace each other in a circle", "/replaces")
             return
         found = sections_and_next(here)
         here, steps = (found[1] if found is not None else None), steps + 1
@@ -238,7 +237,7 @@ def _accept(draft: Draft, digest: str, register: facts.Register, time_zone: str)
     versions = register.versions[draft.section]
     row = facts.version_on(versions, rule.visited_on) or versions[0]
     record = register.record(row, rule.visited_on)
-    converted = [
+    converted: list[dict[str, Any]] = [
         {
             "visit": draft.visit,
             "quantity": reading.quantity,
@@ -260,7 +259,7 @@ def _accept(draft: Draft, digest: str, register: facts.Register, time_zone: str)
         plain[index] = replace(plain[index], doubtful=doubt.code)
         cautions.append(Caution("doubtful", doubt.reason, f"/readings/{index}"))
     edition = in_force(register.editions.get(row.book or "", ()), rule.visited_on)
-    outside = ()
+    outside: Sequence[Verdict] = ()
     if edition is not None:
         outside = verdicts.found_outside(record, edition, rule, plain, register.instruments)
     return _Accepted(draft, digest, rule, converted, cautions, tuple(outside))
@@ -326,23 +325,7 @@ def _store(
     replacing |= {item.draft.section for item in accepted if item.draft.visit in replaced}
     latest.advance(tx.connection, [row for row in reading_rows if row["section"] not in replacing])
     for section in sorted(replacing):
-        _derive_latest(tx.connection, depot, section)
-
-
-def _derive_latest(connection: Connection, depot: str, section: str) -> None:
-    """Derive `latest` of a section again, after a void or a replacement."""
-    joined = _visit.outerjoin(
-        _void, sa.and_(_void.c.depot == _visit.c.depot, _void.c.visit == _visit.c.visit)
-    )
-    query = (
-        sa.select(_visit, _void.c.voided_at)
-        .select_from(joined)
-        .where(_visit.c.depot == depot, _visit.c.section == section)
-        .order_by(_visit.c.visited_at, _visit.c.visit)
-    )
-    utc = ZoneInfo("UTC")
-    found = [facts.visit_of(row, utc, row.voided_at is not None) for row in connection.execute(query)]
-    latest.derive(connection, depot, section, [visit.visit for visit in readings.counting(found)])
+        visit_records.derive_latest(tx.connection, depot, section)
 
 
 def rebuild_latest(tx: Transaction, depot: str) -> int:
@@ -351,7 +334,7 @@ def rebuild_latest(tx: Transaction, depot: str) -> int:
     query = sa.select(_visit.c.section).where(_visit.c.depot == depot).distinct().order_by(_visit.c.section)
     sections = tx.connection.execute(query).scalars().all()
     for section in sections:
-        _derive_latest(tx.connection, depot, section)
+        visit_records.derive_latest(tx.connection, depot, section)
     return len(sections)
 
 
@@ -375,7 +358,7 @@ def _judge(
     for item in accepted:
         as_found = [verdict for verdict in item.outside if verdict.stage == Stage.AS_FOUND]
         if as_found:
-            lines.extend(findings.raise_found_outside(tx, row.depot, item.rule, item.draft.section, as_found))
+            lines.extend(findings.raise_found_outside(tx, row.depot, item.draft.section, item.rule, as_found))
         content = _wire(item.draft, tx, item.digest, clock_offset_s)
         lines.append(journal.Entry("visit.stored", "visit", item.draft.visit, (item.draft.section,), content))
     if not lines:
@@ -402,7 +385,7 @@ def _finished(
     sequence: int,
     accepted: Mapping[str, _Accepted],
 ) -> Outcome:
-    if outcome.outcome == "refused" or outcome.section not in judged:
+    if outcome.outcome == "refused" or outcome.section is None or outcome.section not in judged:
         return outcome
     found, verdict = judged[outcome.section]
     item = accepted.get(outcome.visit) if outcome.outcome == "stored" else None
@@ -435,7 +418,8 @@ def _cautions(
     if any(reading.quantity == "drop_shunt" for reading in item.draft.readings):
         yield Caution(
             "rail_surface_not_shown",
-            "A clamped shunt does not meet the film a wheel meets: the drop shunt says nothing of the rail surface.",
+            "A clamped shunt does not meet the film that a wheel meets: a drop shunt says nothing of the "
+            "rail surface.",
         )
     yield from _task_cautions(item, verdict)
     newer = [v for v in readings.counting(found.visits) if v.visited_at > item.rule.visited_at]
@@ -457,9 +441,6 @@ def _task_cautions(item: _Accepted, verdict: Status) -> Iterator[Caution]:
                 yield Caution(reason_.code, reason_.reason, f"/tasks/{index}")
 
 
-# --- void ---------------------------------------------------------------------------------------
-
-
 def void(tx: Transaction, depot: str, visit: str, why: str) -> dict[str, Any]:
     """Declare a visit void; what it says stays, it counts no longer. Returns the visit's wire form.
 
@@ -472,7 +453,7 @@ def void(tx: Transaction, depot: str, visit: str, why: str) -> dict[str, Any]:
     if section is None:
         raise NotFoundError("This depot has no such visit.")
     tx.lock_sections(depot, [section])
-    before = get(tx.connection, depot, visit)
+    before = visit_records.get(tx.connection, depot, visit)
     if before["voided"] is not None:
         raise ConflictError("The visit is void already.", kind="already-void")
     held = tx.connection.execute(
@@ -487,103 +468,8 @@ def void(tx: Transaction, depot: str, visit: str, why: str) -> dict[str, Any]:
             depot=depot, visit=visit, voided_at=tx.now, voided_by=tx.actor.holder, why=why
         )
     )
-    _derive_latest(tx.connection, depot, section)
-    content = get(tx.connection, depot, visit)
+    visit_records.derive_latest(tx.connection, depot, section)
+    content = visit_records.get(tx.connection, depot, visit)
     entry = journal.Entry("visit.voided", "visit", visit, (section,), content)
     status.rejudge_and_append(tx, row, [section], [entry])
     return content
-
-
-# --- reading ------------------------------------------------------------------------------------
-
-
-def get(connection: Connection, depot: str, visit: str) -> dict[str, Any]:
-    """One visit in its wire form; NotFoundError if the depot has none of that id."""
-    found = _wire_rows(connection, sa.and_(_visit.c.depot == depot, _visit.c.visit == visit))
-    if not found:
-        raise NotFoundError("This depot has no such visit.")
-    return found[0]
-
-
-def page(
-    connection: Connection,
-    depot: str,
-    *,
-    section: str | None,
-    received_after: datetime | None,
-    after: tuple[datetime, str] | None,
-    most: int,
-) -> list[dict[str, Any]]:
-    """Visits in order of receipt, from `after` on (received_at, visit), at most `most`."""
-    where = [_visit.c.depot == depot]
-    if section is not None:
-        where.append(_visit.c.section == section)
-    if received_after is not None:
-        where.append(_visit.c.received_at > received_after)
-    if after is not None:
-        at = sa.bindparam("after_at", after[0], type_=_visit.c.received_at.type)
-        where.append(
-            sa.or_(_visit.c.received_at > at, sa.and_(_visit.c.received_at == at, _visit.c.visit > after[1]))
-        )
-    return _wire_rows(connection, sa.and_(*where), most)
-
-
-def _wire_rows(
-    connection: Connection, where: sa.ColumnElement[bool], most: int | None = None
-) -> list[dict[str, Any]]:
-    joined = _visit.outerjoin(
-        _void, sa.and_(_void.c.depot == _visit.c.depot, _void.c.visit == _visit.c.visit)
-    )
-    query = (
-        sa.select(_visit, _void.c.voided_at, _void.c.voided_by, _void.c.why)
-        .select_from(joined)
-        .where(where)
-        .order_by(_visit.c.received_at, _visit.c.visit)
-        .limit(most)
-    )
-    rows = connection.execute(query).all()
-    if not rows:
-        return []
-    found: dict[str, list[ReadingDraft]] = defaultdict(list)
-    wanted = sa.select(_reading).where(
-        _reading.c.depot == rows[0].depot, _reading.c.visit.in_([row.visit for row in rows])
-    )
-    order = (_reading.c.visit, _reading.c.quantity, _reading.c.test_point, _reading.c.stage)
-    for row in connection.execute(wanted.order_by(*order)):
-        found[row.visit].append(
-            ReadingDraft(
-                row.quantity,
-                row.test_point,
-                row.stage,
-                row.comparison,
-                row.value_given,
-                row.unit_given,
-                row.instrument,
-                row.shunt_ohm,
-                row.source,
-            )
-        )
-    return [_wire_row(row, tuple(found[row.visit])) for row in rows]
-
-
-def draft_of(row: Row[Any], given: tuple[ReadingDraft, ...]) -> Draft:
-    """The draft a stored visit was made of (readings in stored order)."""
-    tasks = tuple(TaskDraft(item["task"], item["done"], item["reason"]) for item in json.loads(row.tasks))
-    plain = {name: getattr(row, name) for name in ("visit", "section", "visited_at")}
-    members = ("device", "tester", "ballast", "ballast_state", "rail", "air_temperature_c", "condition_left")
-    plain |= {name: getattr(row, name) for name in (*members, "remarks", "replaces", "pack")}
-    return Draft(**plain, tasks=tasks, work_done=tuple(json.loads(row.work_done)), readings=given)
-
-
-def _wire_row(row: Row[Any], given: tuple[ReadingDraft, ...]) -> dict[str, Any]:
-    voided = None
-    if row.voided_at is not None:
-        voided = {"voided_at": instant_text(row.voided_at), "voided_by": row.voided_by, "why": row.why}
-    return {
-        **visit_content.wire(draft_of(row, given)),
-        "received_at": instant_text(row.received_at),
-        "clock_offset_s": row.clock_offset_s,
-        "received_by": row.received_by,
-        "digest": row.digest,
-        "voided": voided,
-    }

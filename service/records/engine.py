@@ -117,7 +117,9 @@ def _taken(error: exc.DBAPIError) -> Exception:
         error.orig, "sqlite_errorcode", None
     ) in (sqlite3.SQLITE_CONSTRAINT_UNIQUE, sqlite3.SQLITE_CONSTRAINT_PRIMARYKEY)
     if unique:
-        return UnavailableError("Another request wrote the same record at the same moment; post the same again.")
+        return UnavailableError(
+            "Another request wrote the same record at the same moment; post the same again."
+        )
     return error
 
 
@@ -127,9 +129,13 @@ def _sqlite_meaning(error: sqlite3.Error, wrapped: Exception | None = None) -> E
     if primary in (sqlite3.SQLITE_BUSY, sqlite3.SQLITE_LOCKED):
         return UnavailableError("The database is locked by another process; post the same again shortly.")
     if primary == sqlite3.SQLITE_FULL:
-        return UnavailableError("The disk is full: nothing was stored. Post the same again once there is room.")
+        return UnavailableError(
+            "The disk is full: nothing was stored. Post the same again once there is room."
+        )
     if primary == sqlite3.SQLITE_IOERR:
-        return UnavailableError("The database file could not be written: nothing was stored. Post the same again.")
+        return UnavailableError(
+            "The database file could not be written: nothing was stored. Post the same again."
+        )
     if primary in (sqlite3.SQLITE_CORRUPT, sqlite3.SQLITE_NOTADB):
         return StorageFaultError("The database file is damaged or is no database: restore it from a backup.")
     if primary in (sqlite3.SQLITE_CANTOPEN, sqlite3.SQLITE_READONLY, sqlite3.SQLITE_PERM):

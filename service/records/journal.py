@@ -77,9 +77,7 @@ def _parts(values: dict[str, Any]) -> tuple[str, str, str]:
         f'{{"action":{canonical(values["action"])},"actor":{values["actor"]},"content":{values["content"]},'
         f'"depot":{text(values["depot"])},"previous_digest":"'
     )
-    second = (
-        f'","recorded_at":{text(values["recorded_at"])},"sections":{values["sections"]},"sequence":'
-    )
+    second = f'","recorded_at":{text(values["recorded_at"])},"sections":{values["sections"]},"sequence":'
     subject = canonical({"kind": values["subject_kind"], "name": values["subject_name"]})
     return first, second, f',"subject":{subject}}}'
 
@@ -110,7 +108,9 @@ def append(
         row["sequence"] = sequence
         digest = row["digest"] = digest_of(f"{first}{digest}{second}{sequence}{third}")
     connection.execute(sa.insert(_line), rows)
-    connection.execute(sa.update(_head).where(_head.c.depot == depot).values(sequence=sequence, digest=digest))
+    connection.execute(
+        sa.update(_head).where(_head.c.depot == depot).values(sequence=sequence, digest=digest)
+    )
     return int(sequence)
 
 

@@ -66,4 +66,4 @@ def derive(connection: Connection, depot: str, section: str, counting: Sequence[
         sa.select(_reading).where(_reading.c.depot == depot, _reading.c.section == section)
     ).mappings()
     counted = set(counting)
-    bulk.insert(connection, _latest, fold(row for row in found if row["visit"] in counted))
+    bulk.insert(connection, _latest, fold(dict(row) for row in found if row["visit"] in counted))

@@ -77,7 +77,9 @@ def local_day(instant: datetime, time_zone: str) -> date:
 def end_of_day(day: date, time_zone: str) -> datetime:
     """The first instant after a local day, in UTC."""
     following = day + timedelta(days=1)
-    return datetime(following.year, following.month, following.day, tzinfo=ZoneInfo(time_zone)).astimezone(UTC)
+    return datetime(following.year, following.month, following.day, tzinfo=ZoneInfo(time_zone)).astimezone(
+        UTC
+    )
 
 
 @contextmanager
