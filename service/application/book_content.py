@@ -56,7 +56,7 @@ class Sourced(Part):
     standing: Standing
 
 
-class AppliesJson(Part):
+class BookApplies(Part):
     """To which sections something applies; null means whatever the section has."""
 
     circuit_kinds: tuple[CircuitKind, ...] | None = Field(None, min_length=1)
@@ -83,7 +83,7 @@ class AppliesJson(Part):
         return Applicability(**stated)
 
 
-class BoundJson(Part):
+class BookBound(Part):
     """One side of a limit: `value` in the limit's unit (a factor where the limit is relative)."""
 
     value: float
@@ -91,20 +91,20 @@ class BoundJson(Part):
     near_margin: float | None = None
 
 
-class LimitJson(Sourced):
+class BookLimit(Sourced):
     """One limit. `unit` is a UCUM code of the quantity; of a relative limit, the near margins'."""
 
     limit: Word
     title: Text | None = None
     quantity: Word
-    unit: str
+    unit: Annotated[str, StringConstraints(min_length=1, max_length=20)]
     test_points: tuple[TestPoint, ...] | None = None
     relative_to: RelativeTo | None = None
-    minimum: BoundJson | None = None
-    maximum: BoundJson | None = None
+    minimum: BookBound | None = None
+    maximum: BookBound | None = None
     ballast: Literal["dry"] | None = None
     shunt_ohm: float | None = Field(None, ge=0)
-    applies: AppliesJson | None = None
+    applies: BookApplies | None = None
 
     def rule(self) -> Limit:
         """The rule object, in the quantity's base unit; its unit must be a known one."""
@@ -125,7 +125,7 @@ class LimitJson(Sourced):
             title=self.title,
         )
 
-    def _bound(self, bound: BoundJson | None) -> Bound | None:
+    def _bound(self, bound: BookBound | None) -> Bound | None:
         if bound is None:
             return None
         value, margin = bound.value, bound.near_margin
@@ -134,36 +134,36 @@ class LimitJson(Sourced):
         return Bound(value, bound.hazard, None if margin is None else quantities.to_base(margin, self.unit))
 
 
-class WindowJson(Part):
+class BookWindow(Part):
     """A part of every year, as month and day of its first and last day."""
 
     first: DayOfYear
     last: DayOfYear
 
 
-class ShortenedJson(Part):
+class BookShortened(Part):
     """A shorter interval while a result is under a value."""
 
     quantity: Word
-    unit: str
+    unit: Annotated[str, StringConstraints(min_length=1, max_length=20)]
     under: float
     interval: Duration
 
 
-class TaskJson(Sourced):
+class BookTask(Sourced):
     """Something to be done at an interval (ISO 8601 durations of years, months, weeks, days)."""
 
     task: Word
     title: Text | None = None
     interval: Duration | None = None
     grace: Duration | None = None
-    window: WindowJson | None = None
+    window: BookWindow | None = None
     needs: tuple[Word, ...] = ()
     needs_anywhere: tuple[Word, ...] = ()
-    shortened: ShortenedJson | None = None
+    shortened: BookShortened | None = None
     after_work: tuple[Work, ...] = ()
     item: Word | None = None
-    applies: AppliesJson | None = None
+    applies: BookApplies | None = None
 
     def rule(self) -> Task:
         """The rule object; the unit of `shortened` must be a known one."""
@@ -190,7 +190,7 @@ class TaskJson(Sourced):
         )
 
 
-class CombinationJson(Sourced):
+class BookCombination(Sourced):
     """A circuit kind permitted under a traction; `return_rails` null means any number."""
 
     circuit_kind: CircuitKind
@@ -210,7 +210,7 @@ class CombinationJson(Sourced):
         )
 
 
-class NoteJson(Sourced):
+class BookNote(Sourced):
     """A rule in words that no limit, task or combination can carry; shown, never judged."""
 
     note: Annotated[str, StringConstraints(min_length=1, max_length=2000)]
@@ -221,10 +221,10 @@ class Content(Part):
 
     title: Text
     dry_ballast_ohm_km: float | None = Field(None, gt=0, description="null: infinite")
-    limits: tuple[LimitJson, ...] = Field((), max_length=MOST)
-    tasks: tuple[TaskJson, ...] = Field((), max_length=MOST)
-    combinations: tuple[CombinationJson, ...] = Field((), max_length=MOST)
-    notes: tuple[NoteJson, ...] = Field((), max_length=MOST)
+    limits: tuple[BookLimit, ...] = Field((), max_length=MOST)
+    tasks: tuple[BookTask, ...] = Field((), max_length=MOST)
+    combinations: tuple[BookCombination, ...] = Field((), max_length=MOST)
+    notes: tuple[BookNote, ...] = Field((), max_length=MOST)
 
     def rules(self) -> ContentRules:
         """The rule objects; only once `unit_faults` finds nothing."""
@@ -285,7 +285,7 @@ def _unit_faults(path: tuple[str | int, ...], quantity: str, unit: str) -> Itera
         yield BookFault((*path, "unit"), "wrong_unit", reason)
 
 
-def _applicability(applies: AppliesJson | None) -> Applicability:
+def _applicability(applies: BookApplies | None) -> Applicability:
     return Applicability() if applies is None else applies.rule()
 
 

@@ -84,6 +84,14 @@ def editions_of_books(
     return {book: tuple(several) for book, several in found.items()}
 
 
+def rule_of(connection: Connection, book: str, edition: str) -> Edition | None:
+    """The rule object of one edition in any state; None if there is none of that name."""
+    row = connection.execute(
+        sa.select(_edition).where(_edition.c.book == book, _edition.c.edition == edition)
+    ).one_or_none()
+    return None if row is None else edition_of(*_key(row, None), row.content)
+
+
 def _key(row: Row[Any], known_at: datetime | None) -> Key:
     """What makes an edition's rule object; a withdrawal not yet known leaves it issued."""
     if known_at is not None and row.withdrawn_at is not None and row.withdrawn_at > known_at:

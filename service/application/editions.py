@@ -63,7 +63,7 @@ def draft(tx: Transaction, new: Draft) -> EditionRecord:
         tx.connection.execute(sa.insert(_edition).values(values))
     except IntegrityError as error:
         raise ConflictError("This book has an edition of that name already.") from error
-    return _told(tx, new.book, new.edition, "edition_drafted", ())
+    return _told(tx, new.book, new.edition, "edition.drafted", ())
 
 
 def edit(tx: Transaction, book: str, edition: str, content: Content, *, expected: int) -> EditionRecord:
@@ -78,7 +78,7 @@ def edit(tx: Transaction, book: str, edition: str, content: Content, *, expected
     if tx.actor.holder not in holders:
         holders.append(tx.actor.holder)
     _update(tx, row, content=text, digest=digest_of(text), drafted_by="\n".join(holders))
-    return _told(tx, book, edition, "edition_edited", ())
+    return _told(tx, book, edition, "edition.edited", ())
 
 
 def issue(tx: Transaction, book: str, edition: str, effective_on: date, *, expected: int) -> EditionRecord:
@@ -90,8 +90,10 @@ def issue(tx: Transaction, book: str, edition: str, effective_on: date, *, expec
     row = _locked(tx, book, edition, expected)
     _must_be(row, EditionState.DRAFT, "Only a draft can be issued.")
     if tx.actor.holder in row.drafted_by.split("\n"):
+        reason = "the holder of this key drafted or edited it"
         raise ConflictError(
             "Whoever drafted or edited an edition cannot issue it: a second holder does.",
+            (Fault("second_holder", reason),),
             kind="second-holder",
         )
     _must_be_later(tx.now, effective_on, "/effective_on")
@@ -110,7 +112,7 @@ def issue(tx: Transaction, book: str, edition: str, effective_on: date, *, expec
         issued_at=tx.now,
         issued_by=tx.actor.holder,
     )
-    return _told(tx, book, edition, "edition_issued", depots)
+    return _told(tx, book, edition, "edition.issued", depots)
 
 
 def withdraw(tx: Transaction, book: str, edition: str, withdrawn_on: date, *, expected: int) -> EditionRecord:
@@ -127,7 +129,7 @@ def withdraw(tx: Transaction, book: str, edition: str, withdrawn_on: date, *, ex
         withdrawn_at=tx.now,
         withdrawn_by=tx.actor.holder,
     )
-    return _told(tx, book, edition, "edition_withdrawn", depots)
+    return _told(tx, book, edition, "edition.withdrawn", depots)
 
 
 def bundled() -> tuple[Draft, ...]:
@@ -206,7 +208,7 @@ def _told(tx: Transaction, book: str, edition: str, action: str, depots: Iterabl
     )
     for row in depots:
         if row.depot in using:
-            entry = journal.Entry(action, "limit_book_edition", name, None, content)
+            entry = journal.Entry(action, "edition", name, None, content)
             status.rejudge_and_append(tx, row, None, [entry])
-    tx.append(journal.SERVICE, [journal.Entry(action, "limit_book_edition", name, (), content)])
+    tx.append(journal.SERVICE, [journal.Entry(action, "edition", name, (), content)])
     return record
