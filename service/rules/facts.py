@@ -80,8 +80,6 @@ class SectionRecord:
     relay_drop_away_v: float | None = None
     relay_pick_up_a: float | None = None
     relay_drop_away_a: float | None = None
-    feed_emf_v: float | None = None
-    """What the feed gives on no load, as set."""
     receivers: int | None = None
     choke: bool | None = None
     catenary_current_a: float | None = None
