@@ -28,7 +28,7 @@ from service.records import bulk, journal
 from service.records.journal import canonical
 from service.records.tables import Audit, AuditRow, Depot, Finding
 from service.records.unit_of_work import Actor, Transaction, local_day
-from service.rules.findings import FindingSeed, findings_of, identity, rank
+from service.rules.findings import FindingSeed, findings_of, rank
 from service.rules.status import Status, judge
 from service.rules.words import FindingKind, FindingState, Hazard, SectionState, TaskState
 
@@ -39,7 +39,7 @@ _finding = Finding.__table__  # type: ignore[attr-defined]
 
 WEEKDAYS = (MO, TU, WE, TH, FR, SA, SU)
 
-LAST = (99,)
+LAST = 99
 """Sorts after every finding: sections listed only because they are not judged."""
 
 CAUTION = (
@@ -136,7 +136,7 @@ def _note(survey: _Survey, found: Gathered, status: Status) -> None:
         }
     seeds = findings_of(status, found.facts, survey.moment.as_of)
     for seed in seeds:
-        survey.seeds.setdefault(identity(status.section, seed), (status.section, seed))
+        survey.seeds.setdefault(findings.identity_of(status.section, seed), (status.section, seed))
     if seeds:
         survey.sections[status.section] = _section_json(found, status, survey.moment.as_of)
 
@@ -207,7 +207,7 @@ def _keep(tx: Transaction, survey: _Survey, started_at: datetime) -> None:
         "opened": [row["finding"] for row in opened],
         "cleared": [row.finding for row in cleared],
     }
-    tx.append(depot, [journal.Entry("audit.finished", "audit", on.isoformat(), (), content)])
+    tx.append(depot, [journal.Entry("audit_finished", "audit", on.isoformat(), (), content)])
 
 
 def _clear(tx: Transaction, depot: str, rows: Sequence[Row[Any]], on: date) -> None:
@@ -225,15 +225,18 @@ def _see(tx: Transaction, depot: str, rows: Sequence[Row[Any]], survey: _Survey)
     """Findings that stand: `new` in the first audit that lists them, `open` afterwards."""
     changes = []
     for row in rows:
-        seed = survey.seeds.get(row.identity, (row.section, None))[1]
-        fresh = seed is not None and seed.verdict is not None and row.kind != FindingKind.FOUND_OUTSIDE
+        verdict, hazard = row.verdict, row.hazard
+        if row.kind != FindingKind.FOUND_OUTSIDE:  # what a visit found stays as it was found
+            seed = survey.seeds[row.identity][1]
+            hazard = seed.hazard
+            verdict = None if seed.verdict is None else canonical(verdict_json(seed.verdict))
         changes.append(
             {
                 "one": row.finding,
                 "new_state": FindingState.NEW if row.first_audit_on is None else FindingState.OPEN,
                 "first": row.first_audit_on or survey.moment.as_of,
-                "new_verdict": canonical(verdict_json(seed.verdict)) if fresh else row.verdict,
-                "new_hazard": seed.hazard if fresh else row.hazard,
+                "new_verdict": verdict,
+                "new_hazard": hazard,
             }
         )
     if not changes:
@@ -265,13 +268,21 @@ def _audit_rows(tx: Transaction, survey: _Survey) -> list[dict[str, Any]]:
         survey.sections[status.section] = _section_json(found, status, on)
     contents = []
     for section, shown in survey.sections.items():
-        ordered = sorted(listed[section], key=rank)
-        contents.append((rank(ordered[0]) if ordered else LAST, section, {**shown, "findings": ordered}))
+        ordered = sorted(listed[section], key=_place)
+        contents.append((_place(ordered[0]) if ordered else LAST, section, {**shown, "findings": ordered}))
     contents.sort(key=lambda item: item[:2])
     return [
         {"depot": depot, "audit": on, "section": section, "position": place, "content": canonical(content)}
         for place, (_, section, content) in enumerate(contents, start=1)
     ]
+
+
+def _place(finding: Mapping[str, Any]) -> int:
+    """Where a finding in its wire form stands on the list."""
+    response = finding["response"]
+    reported = response is not None and response["reported_at"] is not None
+    hazard = None if finding["hazard"] is None else Hazard(finding["hazard"])
+    return rank(FindingKind(finding["kind"]), hazard, reported=reported)
 
 
 def _counts(survey: _Survey, opened: int, cleared: int, rows: Sequence[Mapping[str, Any]]) -> dict[str, int]:
@@ -345,11 +356,8 @@ def weekly_list(connection: Connection, depot: str, on: date | None) -> WeeklyLi
 
 def due(connection: Connection, now: datetime) -> list[tuple[str, date]]:
     """Depots whose weekly hour has passed without its audit, with the day it is due as of."""
-    last = dict(
-        connection.execute(
-            sa.select(_audit.c.depot, sa.func.max(_audit.c.audit)).group_by(_audit.c.depot)
-        ).all()
-    )
+    newest = sa.select(_audit.c.depot, sa.func.max(_audit.c.audit).label("on")).group_by(_audit.c.depot)
+    last: dict[str, date] = {row.depot: row.on for row in connection.execute(newest)}
     found = []
     for row in connection.execute(sa.select(_depot).order_by(_depot.c.depot)):
         on = last_audit_day(now, row.time_zone, row.audit_weekday, row.audit_hour)

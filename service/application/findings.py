@@ -21,7 +21,7 @@ from service.records.journal import canonical, instant_text
 from service.records.tables import Finding
 from service.records.unit_of_work import Transaction, local_day
 from service.rules.facts import Visit
-from service.rules.findings import FindingSeed, identity
+from service.rules.findings import FindingSeed, found_outside_seeds, identity
 from service.rules.verdicts import Verdict
 from service.rules.words import FindingKind, FindingState
 
@@ -51,29 +51,23 @@ def raise_found_outside(
 
     One that is open already stays as it is: it was not answered for yet. Returns the journal lines to append.
     """
-    gravest: dict[str, FindingSeed] = {}
-    for verdict in verdicts:
-        seed = FindingSeed(
-            kind=FindingKind.FOUND_OUTSIDE,
-            hazard=verdict.hazard,
-            quantity=verdict.quantity,
-            test_point=verdict.test_point,
-            task=None,
-            verdict=verdict,
-            concession=None,
-        )
-        gravest.setdefault(identity(section, seed), seed)
-    already = open_rows(tx.connection, depot, section)
-    new = {name: seed for name, seed in gravest.items() if name not in already}
+    seeds = {identity_of(section, seed): seed for seed in found_outside_seeds(verdicts)}
+    already = open_rows(tx.connection, depot, section) if seeds else {}
+    new = {name: seed for name, seed in seeds.items() if name not in already}
     rows = new_rows(tx, depot, {name: (section, seed) for name, seed in new.items()}, visit.visited_on, None)
     for row in rows:
         row["visit"] = visit.visit
     if rows:
         tx.connection.execute(sa.insert(_finding), rows)
     return [
-        journal.Entry("finding.opened", "finding", row["finding"], (section,), wire(row, visit.visited_on))
+        journal.Entry("finding_opened", "finding", row["finding"], (section,), wire(row, visit.visited_on))
         for row in rows
     ]
+
+
+def identity_of(section: str, seed: FindingSeed) -> str:
+    """What makes two findings of a depot the same, as it is kept; no part can hold the bar."""
+    return "|".join((section, *(part or "" for part in identity(seed))))
 
 
 def open_rows(connection: Connection, depot: str, section: str | None = None) -> dict[str, Row[Any]]:
@@ -227,6 +221,6 @@ def respond(
     where = (_finding.c.depot == depot, _finding.c.finding == finding)
     tx.connection.execute(sa.update(_finding).where(*where).values(**changes))
     after = get(tx.connection, depot, finding)
-    entry = journal.Entry("finding.answered", "finding", finding, (section,), wire(after, today))
+    entry = journal.Entry("finding_answered", "finding", finding, (section,), wire(after, today))
     tx.append(depot, [entry])
     return today, after

@@ -16,7 +16,7 @@ from zoneinfo import ZoneInfo
 import sqlalchemy as sa
 from sqlalchemy.engine import Connection, Row
 
-from service.application import facts, findings, status, visit_content, visit_records
+from service.application import facts, findings, section_records, status, visit_content, visit_records
 from service.application.visit_content import Draft
 from service.errors import (
     ConflictError,
@@ -254,10 +254,11 @@ def _accept(draft: Draft, digest: str, register: facts.Register, time_zone: str)
     ]
     plain = [facts.reading_of(values, values["stage"], values["value"]) for values in converted]
     cautions = []
-    for index, doubt in doubtful.doubts(record, plain).items():
+    hints = doubtful.EquipmentHints(record.circuit_kind, section_records.feed_emf_v(row))
+    for index, doubt in doubtful.doubts(hints, plain).items():
         converted[index]["doubtful"] = doubt.code
         plain[index] = replace(plain[index], doubtful=doubt.code)
-        cautions.append(Caution("doubtful", doubt.reason, f"/readings/{index}"))
+        cautions.append(Caution(doubt.code, doubt.reason, f"/readings/{index}"))
     edition = in_force(register.editions.get(row.book or "", ()), rule.visited_on)
     outside: Sequence[Verdict] = ()
     if edition is not None:
@@ -356,11 +357,9 @@ def _judge(
     }
     lines: list[journal.Entry] = []
     for item in accepted:
-        as_found = [verdict for verdict in item.outside if verdict.stage == Stage.AS_FOUND]
-        if as_found:
-            lines.extend(findings.raise_found_outside(tx, row.depot, item.draft.section, item.rule, as_found))
+        lines.extend(findings.raise_found_outside(tx, row.depot, item.draft.section, item.rule, item.outside))
         content = _wire(item.draft, tx, item.digest, clock_offset_s)
-        lines.append(journal.Entry("visit.stored", "visit", item.draft.visit, (item.draft.section,), content))
+        lines.append(journal.Entry("visit_stored", "visit", item.draft.visit, (item.draft.section,), content))
     if not lines:
         return judged, journal.head(tx.connection, row.depot)[0]
     sequence = tx.append(row.depot, lines)
@@ -470,6 +469,6 @@ def void(tx: Transaction, depot: str, visit: str, why: str) -> dict[str, Any]:
     )
     visit_records.derive_latest(tx.connection, depot, section)
     content = visit_records.get(tx.connection, depot, visit)
-    entry = journal.Entry("visit.voided", "visit", visit, (section,), content)
+    entry = journal.Entry("visit_voided", "visit", visit, (section,), content)
     status.rejudge_and_append(tx, row, [section], [entry])
     return content
