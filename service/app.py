@@ -6,30 +6,38 @@ a clock of their own.
 
 from __future__ import annotations
 
+import os
 from collections.abc import AsyncIterator, Callable
-from contextlib import asynccontextmanager
+from contextlib import ExitStack, asynccontextmanager
 from datetime import UTC, datetime
 from importlib.metadata import version
+from typing import Any
 
 import anyio.to_thread
 from fastapi import FastAPI
 from fastapi.routing import APIRoute
 from fastapi_offline import FastAPIOffline
+from filelock import FileLock, Timeout
 from uuid6 import uuid7
 
-from service.api import openapi, problems
+from service.api import logs, openapi, problems
 from service.api.deps import parameters_of
 from service.api.logs import Frame, Metrics
 from service.api.routes import ROUTERS
 from service.application.context import Service
+from service.errors import ConflictError, NotAcceptableError, StorageFaultError
 from service.jobs import scheduler
-from service.records.engine import Database
-from service.settings import Settings
+from service.records import migrations
+from service.records.engine import Database, sqlite_path
+from service.settings import Settings, from_environment
 
 DESCRIPTION = (
     "Track circuit records, limits and verdicts for a signalling depot. Everything here is advice: it "
     "authorises nothing, and defers to the railway's own rules and to a competent, licensed person."
 )
+
+STOPS_WITHIN_S = 10
+"""How long requests under way may take to finish when the server is told to stop."""
 
 
 def utc_now() -> datetime:
@@ -79,3 +87,58 @@ def create_app(settings: Settings, clock: Callable[[], datetime] = utc_now, *, t
     problems.install(app)
     openapi.install(app)
     return app
+
+
+def app_from_environment() -> FastAPI:
+    """The app of one of several server processes."""
+    settings = from_environment(os.environ)
+    logs.configure(settings.log_level)
+    return create_app(settings)
+
+
+def serve(settings: Settings, *, host: str, port: int, workers: int) -> None:
+    """Serve until told to stop.
+
+    Raises
+    ------
+    NotAcceptableError
+        For more than one process on SQLite: the one write lock lives in the process.
+    ConflictError
+        If another process serves the same SQLite file.
+    StorageFaultError
+        If the database is not migrated.
+    """
+    path = sqlite_path(settings.database_url)
+    if path is not None and workers > 1:
+        raise NotAcceptableError(
+            "SQLite has one writer, whose lock lives in the process: use one worker, or PostgreSQL."
+        )
+    import uvicorn
+
+    require_migrated(settings)
+    with ExitStack() as held:
+        if path is not None:
+            try:
+                held.enter_context(FileLock(path.with_name(f"{path.name}.lock"), timeout=0))
+            except Timeout:
+                raise ConflictError(f"Another process serves {path}.") from None
+        options: dict[str, Any] = {"host": host, "port": port, "log_config": None, "server_header": False}
+        options["timeout_graceful_shutdown"] = STOPS_WITHIN_S
+        if workers == 1:
+            logs.configure(settings.log_level)
+            uvicorn.run(create_app(settings), **options)
+        else:
+            uvicorn.run("service.app:app_from_environment", factory=True, workers=workers, **options)
+
+
+def require_migrated(settings: Settings) -> None:
+    """StorageFaultError if the database does not hold this version's tables."""
+    path = sqlite_path(settings.database_url)
+    if path is not None and not path.exists():  # opening it would make an empty one
+        raise StorageFaultError(f"There is no database at {path}: run `shuntbook migrate`.")
+    database = Database(settings.database_url, 1)
+    with database.read() as connection:
+        current = migrations.current(connection)
+    database.close()
+    if current != migrations.newest():
+        raise StorageFaultError("The database is not migrated to this version: run `shuntbook migrate`.")

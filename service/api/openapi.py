@@ -100,7 +100,7 @@ def _complete(made: dict[str, Any], routes: list[APIRoute]) -> None:
     models = {call.model for route in routes for call in calls(route) if isinstance(call, JsonBody)}
     references = _add_schemas(schemas, models)
     for route in routes:
-        for method in route.methods:
+        for method in route.methods or ():
             _complete_operation(made["paths"][route.path][method.lower()], route, method, references)
 
 

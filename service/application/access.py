@@ -154,15 +154,13 @@ def note_use(service: Service, label: str) -> None:
 def _check(wanted: Wanted, now: datetime) -> None:
     faults = []
     if not wanted.scopes or set(wanted.scopes) - set(SCOPES):
-        faults.append(Fault("scope", f"A key has one or more of the scopes {', '.join(SCOPES)}."))
+        faults.append(Fault("scope", f"a key has one or more of the scopes {', '.join(SCOPES)}"))
     if not wanted.holder.strip():
-        faults.append(Fault("holder", "A key has a holder."))
+        faults.append(Fault("holder", "a key has a holder"))
     if wanted.expires_at is not None and wanted.expires_at <= now:
-        faults.append(Fault("expired", "The key would have expired already."))
+        faults.append(Fault("expired", "the key would have expired already"))
     if faults:
-        raise NotAcceptableError(
-            "The key cannot be issued: " + " ".join(f.reason for f in faults), tuple(faults)
-        )
+        raise NotAcceptableError("The key cannot be issued:", tuple(faults))
 
 
 def _row(connection: Connection, label: str) -> RowMapping | None:
@@ -172,12 +170,14 @@ def _row(connection: Connection, label: str) -> RowMapping | None:
 def _journal(tx: Transaction, action: str, label: str) -> None:
     row = _row(tx.connection, label)
     assert row is not None
-    entry = journal.Entry(action, "key", label, (), _content(_of(row)))
+    entry = journal.Entry(action, "key", label, (), content(_of(row)))
     feed.open_service_stream(tx.connection)
     tx.append(journal.SERVICE, [entry])
 
 
-def _content(key: Key) -> dict[str, Any]:
+def content(key: Key) -> dict[str, Any]:
+    """The key as its journal lines and the operator's list show it."""
+
     def instant(at: datetime | None) -> str | None:
         return None if at is None else journal.instant_text(at)
 

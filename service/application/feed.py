@@ -1,11 +1,10 @@
-"""The journal as others read it: the change feed, and the check of the chain.
+"""The journal as others read it: the change feed.
 
 Appending is in `records/journal.py`; what is appended is decided by each noun.
 """
 
 from __future__ import annotations
 
-from collections.abc import Iterator
 from dataclasses import dataclass
 from typing import Any
 
@@ -73,10 +72,3 @@ def open_service_stream(connection: Connection) -> None:
 def streams(connection: Connection) -> list[str]:
     """Every chain there is: each depot's, and the service's own."""
     return list(connection.execute(sa.select(_head.c.depot).order_by(_head.c.depot)).scalars())
-
-
-def breaks(connection: Connection) -> Iterator[journal.Break]:
-    """The first broken line of every chain that has one."""
-    for stream in streams(connection):
-        if (found := journal.verify(connection, stream)) is not None:
-            yield found

@@ -5,7 +5,7 @@ from __future__ import annotations
 from enum import StrEnum
 from typing import Annotated
 
-from pydantic import ConfigDict, Field
+from pydantic import ConfigDict, Field, JsonValue
 
 from service.api.schemas.base import Answer, Instant, Line, Name, Request
 
@@ -22,13 +22,13 @@ class Weekday(StrEnum):
     SUNDAY = "sunday"
 
 
-_TERMS = {
+_TERMS: dict[str, JsonValue] = {
     "title": "Harrow Vale signalling depot",
     "time_zone": "Europe/London",
     "audit_weekday": "monday",
     "audit_hour": 5,
 }
-_SERVED = {"version": 1, "created_at": "2026-11-01T08:00:00Z", "sequence": 1}
+_SERVED: dict[str, JsonValue] = {"version": 1, "created_at": "2026-11-01T08:00:00Z", "sequence": 1}
 
 Hour = Annotated[int, Field(ge=0, le=23)]
 
