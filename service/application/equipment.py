@@ -10,7 +10,15 @@ from __future__ import annotations
 from datetime import date
 from typing import Annotated, Any, Literal
 
-from pydantic import BaseModel, BeforeValidator, ConfigDict, Field, StringConstraints, TypeAdapter
+from pydantic import (
+    BaseModel,
+    BeforeValidator,
+    ConfigDict,
+    Field,
+    StringConstraints,
+    TypeAdapter,
+    field_validator,
+)
 
 TEST_POINT_PATTERN = r"^(feed_end|relay_end|middle|leg:[A-Za-z0-9._()-]{1,40})$"
 TestPoint = Annotated[str, StringConstraints(pattern=TEST_POINT_PATTERN)]
@@ -57,7 +65,7 @@ class Feed(Item):
     emf_v: Volts | None = None
     emf_low_v: Volts | None = None
     emf_high_v: Volts | None = None
-    taps_v: tuple[Volts, ...] | None = None
+    taps_v: Annotated[tuple[Volts, ...], Field(min_length=1, max_length=100)] | None = None
     """The values `emf_v` may be set to, where it is set by taps."""
     series_ohm: Impedance | None = None
     adjustable_ohm: Ohms | None = None
@@ -150,7 +158,15 @@ class Common(Part):
     ballast_wet_ohm_km: OhmKm | None = None
     ballast_dry_ohm_km: OhmKm | None = None
     set_up_on: date | None = None
-    set_up: tuple[SetUp, ...] | None = None
+    set_up: Annotated[tuple[SetUp, ...], Field(min_length=1, max_length=100)] | None = None
+
+    @field_validator(
+        "feed", "line", "bonds", "relay", "feed_bond", "relay_bond", mode="after", check_fields=False
+    )
+    @classmethod
+    def _null_if_silent(cls, part: Part | None) -> Part | None:
+        """A part of which nothing is stated is kept, and answered, as null."""
+        return part if part is not None and part.model_dump(exclude_none=True) else None
 
 
 class DcEquipment(Common):
@@ -207,16 +223,16 @@ class CodedEquipment(Common):
     relay: Relay | None = None
 
 
-Equipment = Annotated[
+Kinds = (
     DcEquipment
     | DcAcImmuneEquipment
     | AcSingleRailEquipment
     | AcDoubleRailEquipment
     | AudioFrequencyEquipment
     | ImpulseEquipment
-    | CodedEquipment,
-    Field(discriminator="circuit_kind"),
-]
+    | CodedEquipment
+)
+Equipment = Annotated[Kinds, Field(discriminator="circuit_kind")]
 """Equipment of one section; `circuit_kind` must be the section's own."""
 
 _equipment: TypeAdapter[Any] = TypeAdapter(Equipment)
