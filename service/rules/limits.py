@@ -11,6 +11,7 @@ from collections.abc import Collection, Iterable, Iterator
 from datetime import date
 from typing import TypeVar
 
+from service.rules.consistency import faults
 from service.rules.editions import (
     Applicability,
     Applying,
@@ -40,6 +41,7 @@ __all__ = [
     "Task",
     "YearlyWindow",
     "applying",
+    "faults",
     "in_force",
     "next_change",
 ]

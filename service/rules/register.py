@@ -12,6 +12,9 @@ from service.rules.editions import Combination
 from service.rules.facts import Adjacent, SectionRecord
 from service.rules.words import Bonding
 
+PERMITTED = "circuit_kind_permitted"
+"""Name and quantity of the limit that a book's permitted combinations make."""
+
 ATTRIBUTES = {
     "length": "length_m",
     "points_ends": "points_ends",

@@ -17,14 +17,12 @@ from service.rules.facts import Concession, Instrument, Reading, SectionFacts, S
 from service.rules.limits import applying
 from service.rules.proof import DRIEST, bounds_at, covers, lacking, named, open_failure
 from service.rules.quantities import QUANTITIES
-from service.rules.register import Registered, permission, registered
+from service.rules.register import PERMITTED, Registered, permission, registered
 from service.rules.words import Comparison, Hazard, Reason, Stage, VerdictWord
 
 __all__ = ["Reason", "Verdict", "found_outside", "judge_combination", "judge_limit"]
 
 OUTSIDE, UNPROVEN, NOT_MEASURED = VerdictWord.OUTSIDE, VerdictWord.UNPROVEN, VerdictWord.NOT_MEASURED
-
-PERMITTED = "circuit_kind_permitted"
 
 BEYOND_CONCESSION = Reason("beyond_concession", "outside what the concession allows too")
 
