@@ -100,6 +100,11 @@ class UniformLine:
         return TwoPort(a, self.series_ohm * spread, self.leakage_s * spread, a)
 
 
+def sinhc(angle: Numbers) -> Numbers:
+    """Compute sinh(x)/x, exactly 1 at zero."""
+    return np.divide(_cosh_sinh(angle)[1], angle, out=np.ones_like(angle), where=angle != 0)
+
+
 def _cosh_sinh(angle: Numbers) -> tuple[Numbers, Numbers]:
     """Hyperbolic cosine and sine; from real functions where complex, at a quarter of the library's time."""
     grow, shrink = np.cosh(np.real(angle)), np.sinh(np.real(angle))
