@@ -114,3 +114,4 @@ def test_units_are_converted_in_one_place(path: Path) -> None:
 
 def test_a_unit_code_outside_its_place_is_found() -> None:
     assert list(house.prefixed_units('FACTORS = {"mOhm": 0.001}')) == ["1: mOhm"]
+    assert list(house.prefixed_units('reading = {"value": 310, "unit": "mV"}')) == []

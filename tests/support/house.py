@@ -122,9 +122,17 @@ def function_lengths(source: str) -> Iterator[tuple[str, int]]:
 
 
 def prefixed_units(source: str) -> Iterator[str]:
-    """Prefixed unit codes written out as strings."""
-    for node in ast.walk(ast.parse(source)):
-        if isinstance(node, ast.Constant) and node.value in PREFIXED_UNITS:
+    """Prefixed unit codes written out as strings, but for a reading's own `"unit"` in an example."""
+    tree = ast.parse(source)
+    given = {
+        id(value)
+        for node in ast.walk(tree)
+        if isinstance(node, ast.Dict)
+        for key, value in zip(node.keys, node.values, strict=True)
+        if isinstance(key, ast.Constant) and key.value == "unit"
+    }
+    for node in ast.walk(tree):
+        if isinstance(node, ast.Constant) and node.value in PREFIXED_UNITS and id(node) not in given:
             yield f"{node.lineno}: {node.value}"
 
 
