@@ -10,9 +10,9 @@ from __future__ import annotations
 from collections.abc import Iterator
 from dataclasses import dataclass
 from datetime import date
-from typing import Annotated, Any, Literal
+from typing import TYPE_CHECKING, Annotated, Any, Literal, TypeVar
 
-from pydantic import BaseModel, ConfigDict, Field, StringConstraints
+from pydantic import AfterValidator, BaseModel, ConfigDict, Field, StringConstraints
 
 from service.rules import quantities
 from service.rules.limits import (
@@ -37,8 +37,15 @@ TestPoint = Annotated[
 Duration = Annotated[str, StringConstraints(pattern=r"^P[0-9YMWD]{2,20}$")]
 DayOfYear = Annotated[str, StringConstraints(pattern=r"^(0[1-9]|1[0-2])-(0[1-9]|[12][0-9]|3[01])$")]
 Standing = Literal["read", "second_hand", "memory", "practice", "computed"]
-MOST = 1000
-"""Of limits, tasks and combinations each in one edition."""
+MOST = 500
+"""The most that a list in a book may hold."""
+
+T = TypeVar("T")
+if TYPE_CHECKING:
+    Several = tuple[T, ...]
+else:  # null and absent say the same as an empty list, which is what is kept
+    _List = Annotated[tuple[T, ...], Field(max_length=MOST)]
+    Several = Annotated[_List | None, AfterValidator(lambda given: given or ())]
 
 
 class Part(BaseModel):
@@ -158,10 +165,10 @@ class BookTask(Sourced):
     interval: Duration | None = None
     grace: Duration | None = None
     window: BookWindow | None = None
-    needs: tuple[Word, ...] = ()
-    needs_anywhere: tuple[Word, ...] = ()
+    needs: Several[Word] = ()
+    needs_anywhere: Several[Word] = ()
     shortened: BookShortened | None = None
-    after_work: tuple[Work, ...] = ()
+    after_work: Several[Work] = ()
     item: Word | None = None
     applies: BookApplies | None = None
 
@@ -221,10 +228,10 @@ class Content(Part):
 
     title: Text
     dry_ballast_ohm_km: float | None = Field(None, gt=0, description="null: infinite")
-    limits: tuple[BookLimit, ...] = Field((), max_length=MOST)
-    tasks: tuple[BookTask, ...] = Field((), max_length=MOST)
-    combinations: tuple[BookCombination, ...] = Field((), max_length=MOST)
-    notes: tuple[BookNote, ...] = Field((), max_length=MOST)
+    limits: Several[BookLimit] = ()
+    tasks: Several[BookTask] = ()
+    combinations: Several[BookCombination] = ()
+    notes: Several[BookNote] = ()
 
     def rules(self) -> ContentRules:
         """The rule objects; only once `unit_faults` finds nothing."""

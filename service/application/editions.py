@@ -15,7 +15,7 @@ import sqlalchemy as sa
 from sqlalchemy.engine import Row
 from sqlalchemy.exc import IntegrityError
 
-from service.application import books, status
+from service.application import books, feed, status
 from service.application.book_content import Content, Draft, unit_faults
 from service.application.books import EditionRecord
 from service.errors import ConflictError, Fault, NotAcceptableError, NotFoundError, StaleError
@@ -42,7 +42,7 @@ def draft(tx: Transaction, new: Draft) -> EditionRecord:
     Raises NotAcceptableError naming every fault of the content, ConflictError if the edition is there.
     """
     content = new.content()
-    text = _checked(new.book, new.edition, content)
+    text = checked(new.book, new.edition, content)
     bulk.insert(
         tx.connection,
         _book,
@@ -73,7 +73,7 @@ def edit(tx: Transaction, book: str, edition: str, content: Content, *, expected
     """
     row = _locked(tx, book, edition, expected)
     _must_be(row, EditionState.DRAFT, "Only a draft can be edited: an issued edition never changes.")
-    text = _checked(book, edition, content)
+    text = checked(book, edition, content)
     holders = row.drafted_by.split("\n")
     if tx.actor.holder not in holders:
         holders.append(tx.actor.holder)
@@ -103,7 +103,7 @@ def issue(tx: Transaction, book: str, edition: str, effective_on: date, *, expec
     if tx.connection.execute(taken).first() is not None:
         fault = Fault("day_taken", "another edition of this book takes effect on that day", "/effective_on")
         raise NotAcceptableError("Two editions cannot take effect on one day.", (fault,))
-    _checked(book, edition, Content.model_validate_json(row.content))
+    checked(book, edition, Content.model_validate_json(row.content))
     _update(
         tx,
         row,
@@ -141,15 +141,19 @@ def bundled() -> tuple[Draft, ...]:
 
 def load_bundled(tx: Transaction) -> tuple[tuple[str, str], ...]:
     """Draft the bundled editions that are not there yet; (book, edition) of those drafted now."""
-    known = set(tx.connection.execute(sa.select(_edition.c.book, _edition.c.edition)).tuples())
+    names = sa.select(_edition.c.book, _edition.c.edition)
+    known = {(row.book, row.edition) for row in tx.connection.execute(names)}
     missing = [new for new in bundled() if (new.book, new.edition) not in known]
     for new in missing:
         draft(tx, new)
     return tuple((new.book, new.edition) for new in missing)
 
 
-def _checked(book: str, edition: str, content: Content) -> str:
-    """The text to keep of a content that is consistent."""
+def checked(book: str, edition: str, content: Content) -> str:
+    """The text to keep of a content that is consistent.
+
+    Raises NotAcceptableError naming every fault with its pointer.
+    """
     faults: Iterable[BookFault] = tuple(unit_faults(content))
     text = journal.canonical(content.model_dump(mode="json"))
     if not faults:
@@ -164,7 +168,8 @@ def _checked(book: str, edition: str, content: Content) -> str:
 
 
 def _pointer(path: Iterable[str | int]) -> str:
-    return "".join(f"/{part}" for part in path)
+    """A rule's path as a pointer into the content, where one member goes by another name."""
+    return "".join(f"/{'ballast' if part == 'ballast_dry' else part}" for part in path)
 
 
 def _locked(tx: Transaction, book: str, edition: str, expected: int) -> Row[Any]:
@@ -210,5 +215,6 @@ def _told(tx: Transaction, book: str, edition: str, action: str, depots: Iterabl
         if row.depot in using:
             entry = journal.Entry(action, "edition", name, None, content)
             status.rejudge_and_append(tx, row, None, [entry])
+    feed.open_service_stream(tx.connection)
     tx.append(journal.SERVICE, [journal.Entry(action, "edition", name, (), content)])
     return record

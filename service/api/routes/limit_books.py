@@ -21,6 +21,7 @@ from service.api.schemas.limit_books import (
     book_answer,
     edition_answer,
 )
+from service.api.whole import refuse_partial
 from service.application import books, editions
 
 router = APIRouter(tags=["limit books"])
@@ -69,6 +70,7 @@ def edit_edition(
     sent: Annotated[EditionEdit, Depends(body_of(EditionEdit))],
 ) -> Response:
     """Replace what a draft says. An issued edition never changes: draft another."""
+    refuse_partial(sent)
     with service_of(request).unit_of_work(caller.actor) as tx:
         kept = editions.edit(tx, book, edition, sent.content(), expected=version)
     return answer(edition_answer(kept), conditional.written(kept.version))

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import json
 from dataclasses import fields
 from datetime import date
 from typing import Any
@@ -9,6 +10,7 @@ from typing import Any
 from pydantic import ConfigDict, Field
 
 from service.api.schemas.base import Answer, Instant, Request
+from service.api.whole import IGNORED
 from service.application.book_content import (
     BookCombination,
     BookLimit,
@@ -16,7 +18,6 @@ from service.application.book_content import (
     BookTask,
     Content,
     Draft,
-    Text,
 )
 from service.application.books import BookRecord, EditionRecord
 from service.rules.words import EditionState
@@ -40,6 +41,7 @@ CONTENT: dict[str, Any] = {
     "combinations": [{"circuit_kind": "dc", "traction": "none", **_SOURCE}],
     "notes": [],
 }
+WHOLE: dict[str, Any] = Content.model_validate_json(json.dumps(CONTENT)).model_dump(mode="json")
 HEAD: dict[str, Any] = {
     "book": "harrow-vale-house",
     "edition": "2",
@@ -65,30 +67,24 @@ class EditionDraft(Draft):
     )
 
 
-class EditionEdit(Request):
-    """All that a draft says; the other members are the service's own and ignored."""
+class EditionEdit(Content):
+    """All that a draft says, at whatever depth; the other members are the service's own and ignored."""
 
-    model_config = ConfigDict(json_schema_extra={"examples": [CONTENT]})
+    model_config = ConfigDict(json_schema_extra={"examples": [WHOLE], "required": list(Content.model_fields)})
 
-    title: Text
-    dry_ballast_ohm_km: float | None = Field(gt=0)
-    limits: tuple[BookLimit, ...]
-    tasks: tuple[BookTask, ...]
-    combinations: tuple[BookCombination, ...]
-    notes: tuple[BookNote, ...]
-    book: object = Field(default=None, description="Ignored")
-    edition: object = Field(default=None, description="Ignored")
-    state: object = Field(default=None, description="Ignored")
-    version: object = Field(default=None, description="Ignored")
-    digest: object = Field(default=None, description="Ignored")
-    drafted_at: object = Field(default=None, description="Ignored")
-    drafted_by: object = Field(default=None, description="Ignored")
-    effective_on: object = Field(default=None, description="Ignored")
-    issued_at: object = Field(default=None, description="Ignored")
-    issued_by: object = Field(default=None, description="Ignored")
-    withdrawn_on: object = Field(default=None, description="Ignored")
-    withdrawn_at: object = Field(default=None, description="Ignored")
-    withdrawn_by: object = Field(default=None, description="Ignored")
+    book: object = Field(default=None, description=IGNORED)
+    edition: object = Field(default=None, description=IGNORED)
+    state: object = Field(default=None, description=IGNORED)
+    version: object = Field(default=None, description=IGNORED)
+    digest: object = Field(default=None, description=IGNORED)
+    drafted_at: object = Field(default=None, description=IGNORED)
+    drafted_by: object = Field(default=None, description=IGNORED)
+    effective_on: object = Field(default=None, description=IGNORED)
+    issued_at: object = Field(default=None, description=IGNORED)
+    issued_by: object = Field(default=None, description=IGNORED)
+    withdrawn_on: object = Field(default=None, description=IGNORED)
+    withdrawn_at: object = Field(default=None, description=IGNORED)
+    withdrawn_by: object = Field(default=None, description=IGNORED)
 
     def content(self) -> Content:
         """The editable members."""
@@ -132,7 +128,7 @@ class EditionHead(Answer):
 class EditionAnswer(EditionHead):
     """An edition with all it says. `drafted_by` names every holder who had a part in it."""
 
-    model_config = ConfigDict(json_schema_extra={"examples": [HEAD | CONTENT]})
+    model_config = ConfigDict(json_schema_extra={"examples": [HEAD | WHOLE]})
 
     title: str
     dry_ballast_ohm_km: float | None
