@@ -81,8 +81,7 @@ def page(
 
 def every(connection: Connection, depot: str, filters: Filters) -> Iterator[Listed]:
     """All sections by name, streamed. Read in a snapshot."""
-    result = connection.execution_options(yield_per=1000).execute(_query(depot, filters))
-    for row in result:
+    for row in connection.execute(_query(depot, filters), execution_options={"yield_per": 1000}):
         yield _listed(row)
 
 

@@ -17,15 +17,12 @@ from sqlalchemy.engine import Connection, Row
 
 from service.application import section_content, status
 from service.application.section_content import Content, json_value
-from service.application.section_records import record
 from service.errors import ConflictError, Fault, NotAcceptableError, NotFoundError, StaleError
 from service.records import journal
 from service.records.tables import LimitBook, Section, SectionVersion
 from service.records.tables import Status as StatusRow
 from service.records.unit_of_work import Transaction, local_day
 from service.rules.words import SectionState
-
-__all__ = ["Recorded", "create", "edit", "get", "record", "versions"]
 
 _section = Section.__table__  # type: ignore[attr-defined]
 _version = SectionVersion.__table__  # type: ignore[attr-defined]
