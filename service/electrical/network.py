@@ -8,6 +8,7 @@ from __future__ import annotations
 
 from collections.abc import Iterator
 from dataclasses import dataclass
+from typing import Any
 
 import numpy as np
 
@@ -74,7 +75,7 @@ class Network:
         By Thevenin: between the rails at the place, w v open and w Z w' + Bl Br/B inside, with w the
         share of a current put across there that appears at the leg's four terminals.
         """
-        modes = modes_of(self.layout, leg, self.leakage)
+        modes = modes_of(self.layout, np.asarray([leg.length_m]), self.leakage)
         whole, near, far = _around(modes.between, position_m / leg.length_m)
         weights = _differential(far.b / whole.b, near.b / whole.b)
         inside = near.b * far.b / whole.b
@@ -86,7 +87,7 @@ class Network:
         The gap as a series source that lets no current pass: j v flows there unbroken, j being the
         current into the leg's four terminals for one volt in the gap; y0 - j Z j' admits it.
         """
-        modes = modes_of(self.layout, leg, self.leakage)
+        modes = modes_of(self.layout, np.asarray([leg.length_m]), self.leakage)
         share = position_m / leg.length_m
         sign = 1 if rail == 0 else -1
         whole, near, far = _around(modes.between, share)
@@ -146,11 +147,9 @@ def network(layout: Layout, leakage: Leakage) -> Network:
     count = leakage.rail_to_rail.size
     number = np.float64 if layout.frequency_hz == 0 else np.complex128
     matrix = np.zeros((count, len(nodes), len(nodes)), dtype=number)
-    for leg in layout.legs:
-        terminals, admittance = (*leg.start, *leg.end), _leg_admittance(layout, leg, leakage)
-        for row, one in enumerate(terminals):
-            for column, other in enumerate(terminals):
-                matrix[:, nodes[one], nodes[other]] += admittance[:, row, column]
+    at = np.asarray([[nodes[terminal] for terminal in (*leg.start, *leg.end)] for leg in layout.legs])
+    places: Any = (slice(None), at[:, :, np.newaxis], at[:, np.newaxis, :])
+    np.add.at(matrix, places, _leg_admittances(layout, leakage))
     for bond in layout.bonds:
         _stamp(matrix, nodes, bond.between, 1 / bond.resistance_ohm)
     feed = layout.feed
@@ -167,10 +166,10 @@ def network(layout: Layout, leakage: Leakage) -> Network:
     return Network(layout, leakage, nodes, inverse, volts)
 
 
-def modes_of(layout: Layout, leg: Leg, leakage: Leakage) -> Modes:
-    """Both lines of a leg, the leakages on the first axis of two."""
-    km = leg.length_m / 1000
-    series_ohm = np.asarray(_plain(layout, complex(layout.loop_ohm_per_km)) * km)
+def modes_of(layout: Layout, length_m: Reals, leakage: Leakage) -> Modes:
+    """Both lines of legs of lengths (m,): arrays of shape (k, m)."""
+    km = length_m / 1000
+    series_ohm = _plain(layout, complex(layout.loop_ohm_per_km)) * km
     g, e = leakage.rail_to_rail[:, np.newaxis], leakage.rail_to_earth[:, np.newaxis]
     return Modes(UniformLine.of(series_ohm, (g + e / 2) * km), UniformLine.of(series_ohm / 4, 2 * e * km))
 
@@ -183,18 +182,18 @@ def _differential(start: Numbers, end: Numbers) -> Numbers:
     return np.stack([start, -start, end, -end], axis=-1)
 
 
-def _leg_admittance(layout: Layout, leg: Leg, leakage: Leakage) -> Numbers:
-    """Admittance matrix of a leg's four terminals, rail 1 and 2 at the start, 1 and 2 at the end."""
-    modes = modes_of(layout, leg, leakage)
-    between, common = (_two_terminals(line.part(1.0)) for line in (modes.between, modes.common))
-    whole: Numbers = np.kron(between, np.array([[1, -1], [-1, 1]])) + np.kron(common / 4, np.ones((2, 2)))
+def _leg_admittances(layout: Layout, leakage: Leakage) -> Numbers:
+    """Admittance matrices of the legs' four terminals, start 1, 2, end 1, 2: shape (k, legs, 4, 4)."""
+    modes = modes_of(layout, np.asarray([leg.length_m for leg in layout.legs]), leakage)
+    whole: Numbers = np.zeros(())
+    for line, weight, rails in (
+        (modes.between, 1.0, [[1, -1], [-1, 1]]),
+        (modes.common, 0.25, np.ones((2, 2))),
+    ):
+        two = line.part(1.0)
+        for own, ends in ((two.a / two.b, np.eye(2)), (-1 / two.b, 1 - np.eye(2))):
+            whole = whole + weight * own[..., np.newaxis, np.newaxis] * np.kron(ends, rails)
     return whole
-
-
-def _two_terminals(line: TwoPort) -> Numbers:
-    """Admittance matrix of a symmetrical line, both currents into it, shape (k, 2, 2)."""
-    own, across = (line.a / line.b)[:, 0], (-1 / line.b)[:, 0]
-    return np.stack([np.stack([own, across], axis=-1), np.stack([across, own], axis=-1)], axis=-2)
 
 
 def _stamp(matrix: Numbers, nodes: dict[str, int], pair: tuple[str, str], siemens: Numbers | float) -> None:
@@ -208,25 +207,19 @@ def _tie(matrix: Numbers, nodes: dict[str, int], layout: Layout, leakage: Leakag
 
     One tie to a part carries no current, whatever its conductance.
     """
-    lone = [(terminal, terminal) for terminal in nodes]
-    metal = [
-        *lone,
-        *((leg.start[rail], leg.end[rail]) for leg in layout.legs for rail in (0, 1)),
-        *(bond.between for bond in layout.bonds),
-        layout.feed.across,
-        layout.relay.across,
-    ]
-    through_ballast = [*metal, *(leg.start for leg in layout.legs)]
-    for pairs, rows in (
-        (metal, (leakage.rail_to_earth == 0) & (leakage.rail_to_rail == 0)),
-        (through_ballast, (leakage.rail_to_earth == 0) & (leakage.rail_to_rail > 0)),
+    rails = tuple((leg.start[rail], leg.end[rail]) for leg in layout.legs for rail in (0, 1))
+    metal = (*rails, *(bond.between for bond in layout.bonds), layout.feed.across, layout.relay.across)
+    through_ballast = (*metal, *(leg.start for leg in layout.legs))
+    earthed = leakage.rail_to_earth > 0
+    for rows, pairs, skipped in (
+        (~earthed & (leakage.rail_to_rail == 0), metal, ()),
+        (~earthed & (leakage.rail_to_rail > 0), through_ballast, ()),
+        (earthed, through_ballast, layout.legs),
     ):
-        for terminal in set(joined(pairs).values()):
-            matrix[rows, nodes[terminal], nodes[terminal]] += 1.0
-    parts = joined(through_ballast)
-    legged = {parts[leg.start[0]] for leg in layout.legs}
-    for terminal in set(parts.values()) - legged:
-        matrix[leakage.rail_to_earth > 0, nodes[terminal], nodes[terminal]] += 1.0
+        if rows.any():
+            parts = joined(pairs)
+            for terminal in set(parts.values()) - {parts[leg.start[0]] for leg in skipped}:
+                matrix[rows, nodes[terminal], nodes[terminal]] += 1.0
 
 
 def _pairs(layout: Layout) -> Iterator[tuple[str, str]]:
