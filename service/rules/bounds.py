@@ -8,7 +8,6 @@ the same word in every unit.
 from __future__ import annotations
 
 from math import inf
-from typing import NamedTuple
 
 from service.rules.editions import Bounds, Limit
 from service.rules.quantities import difference, product, total
@@ -24,16 +23,12 @@ KEPT = 4096
 """How many bases a limit remembers; more only costs working them out again."""
 
 
-class Weighed(NamedTuple):
-    """Where an interval lies: `judged` is the end that decided, `margin` positive inside.
+Weighed = tuple[VerdictWord, Hazard | None, float | None, float | None]
+"""Where an interval lies: word, hazard of the bound that decides, the end that was judged, margin.
 
-    `unproven` means undecided: the interval straddles the bound, and nothing was judged.
-    """
-
-    word: VerdictWord
-    hazard: Hazard | None
-    judged: float | None
-    margin: float | None
+The margin is positive inside. `unproven` means undecided: the interval reaches across the bound, and
+nothing was judged.
+"""
 
 
 def resolve(limit: Limit, base: float | None) -> Bounds:
@@ -75,25 +70,27 @@ def weigh(low: float, high: float, bounds: Bounds) -> Weighed:
     margin. A half-line is outside if wholly beyond, inside if wholly inside, else undecided.
 
     >>> b = Bounds(0.5, 0.6, None, None, Hazard.WRONG_SIDE, None)
-    >>> [weigh(low, low + 0.1, b).word.value for low in (0.6, 0.5, 0.4)]
+    >>> [weigh(low, low + 0.1, b)[0].value for low in (0.6, 0.5, 0.4)]
     ['within', 'near', 'outside']
-    >>> weigh(0.6, 0.7, b).margin
+    >>> weigh(0.6, 0.7, b)[3]
     0.1
-    >>> weigh(0.3, inf, b).word.value
+    >>> weigh(0.3, inf, b)[0].value
     'unproven'
     """
-    least = most = None
-    if bounds.min is not None:
-        least = _against_minimum(low, high, bounds.min, bounds.near_min, bounds.min_hazard)
-    if bounds.max is not None:
-        most = _against_maximum(low, high, bounds.max, bounds.near_max, bounds.max_hazard)
-    if least is None or most is None:
-        return least or most or Weighed(WITHIN, None, None, None)
-    if least.word is not most.word:
-        return least if least.word.gravity < most.word.gravity else most
-    if least.margin is None or most.margin is None:
+    bottom, near_min, near_max, top, min_hazard, max_hazard = bounds
+    if top is None:
+        if bottom is None:
+            return WITHIN, None, None, None
+        return _against_minimum(low, high, bottom, near_min, min_hazard)
+    most = _against_maximum(low, high, top, near_max, max_hazard)
+    if bottom is None:
+        return most
+    least = _against_minimum(low, high, bottom, near_min, min_hazard)
+    if least[0] is not most[0]:
+        return least if least[0].gravity < most[0].gravity else most
+    if least[3] is None or most[3] is None:
         return least
-    return least if least.margin <= most.margin else most
+    return least if least[3] <= most[3] else most
 
 
 def _against_minimum(
@@ -101,14 +98,14 @@ def _against_minimum(
 ) -> Weighed:
     if low == -inf:
         if high > bound:
-            return Weighed(UNPROVEN, hazard, None, None)
-        return Weighed(OUTSIDE, hazard, high, difference(high, bound))
+            return UNPROVEN, hazard, None, None
+        return OUTSIDE, hazard, high, difference(high, bound)
     if low < bound:
         if high == inf:
-            return Weighed(UNPROVEN, hazard, None, None)
-        return Weighed(OUTSIDE, hazard, low, difference(low, bound))
+            return UNPROVEN, hazard, None, None
+        return OUTSIDE, hazard, low, difference(low, bound)
     word = WITHIN if near is None or low >= near else NEAR
-    return Weighed(word, hazard, low, difference(low, bound))
+    return word, hazard, low, difference(low, bound)
 
 
 def _against_maximum(
@@ -116,11 +113,11 @@ def _against_maximum(
 ) -> Weighed:
     if high == inf:
         if low <= bound:
-            return Weighed(UNPROVEN, hazard, None, None)
-        return Weighed(OUTSIDE, hazard, low, difference(bound, low))
+            return UNPROVEN, hazard, None, None
+        return OUTSIDE, hazard, low, difference(bound, low)
     if high > bound:
         if low == -inf:
-            return Weighed(UNPROVEN, hazard, None, None)
-        return Weighed(OUTSIDE, hazard, high, difference(bound, high))
+            return UNPROVEN, hazard, None, None
+        return OUTSIDE, hazard, high, difference(bound, high)
     word = WITHIN if near is None or high <= near else NEAR
-    return Weighed(word, hazard, high, difference(bound, high))
+    return word, hazard, high, difference(bound, high)

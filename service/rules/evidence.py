@@ -6,7 +6,7 @@ Built once for each judgement; verdicts, tasks and cautions all ask here. No lim
 from __future__ import annotations
 
 from bisect import insort
-from collections.abc import Mapping, Sequence
+from collections.abc import Sequence
 from datetime import date
 from operator import itemgetter
 
@@ -22,6 +22,9 @@ The order is twice the visit's place in `Evidence.visits`, plus one if as left: 
 """
 
 _order = itemgetter(0)
+EXACTLY, AS_LEFT = Comparison.EQ, Stage.AS_LEFT
+
+UNKNOWN = Reason("unknown", "not asked yet")
 
 RATED = {
     (RelativeTo.RELAY_PICK_UP, "V"): ("relay_pick_up_voltage", "relay_pick_up_v"),
@@ -42,7 +45,6 @@ class Evidence:
 
     __slots__ = (
         "_rated",
-        "_steps",
         "_trust",
         "as_of",
         "claims",
@@ -66,31 +68,32 @@ class Evidence:
         self.next_calibration_on: date | None = None
         """First day on which a calibration that is already stored begins to count."""
         self._trust: dict[tuple[str | None, int], Reason | None] = {}
-        self._steps: dict[tuple[str | None, int], Mapping[str, float]] = {}
         self._rated: dict[str, tuple[float | None, Reason | None]] = {}
         self._put_in_order(facts.readings)
         self.fresh_from = max(2 * self.last_work(CIRCUIT_CHANGING_WORK) + 1, 2 * self._returned())
 
     def _put_in_order(self, readings: Sequence[Reading]) -> None:
-        places = {}
+        series, points, claims = self.series, self.points, self.claims
+        first_order = {}
         for place, visit in enumerate(self.visits):
-            places[visit.visit] = place
+            first_order[visit.visit] = 2 * place
             for claim in visit.tasks:
-                self.claims.setdefault(claim.task, []).append((place, claim.done))
+                claims.setdefault(claim.task, []).append((place, claim.done))
         for reading in readings:
-            found = places.get(reading.visit)
-            if found is None:
+            order = first_order.get(reading.visit)
+            if order is None:
                 continue
-            order = 2 * found + (reading.stage is Stage.AS_LEFT)
+            if reading.stage is AS_LEFT:
+                order += 1
             key = (reading.quantity, reading.test_point)
-            series = self.series.get(key)
-            if series is None:
-                self.series[key] = [(order, reading)]
-                self.points.setdefault(reading.quantity, []).append(reading.test_point)
-            elif order >= series[-1][0]:
-                series.append((order, reading))
+            known = series.get(key)
+            if known is None:
+                series[key] = [(order, reading)]
+                points.setdefault(reading.quantity, []).append(reading.test_point)
+            elif order >= known[-1][0]:
+                known.append((order, reading))
             else:
-                insort(series, (order, reading), key=_order)
+                insort(known, (order, reading), key=_order)
 
     def last_work(self, kinds: frozenset[Work]) -> int:
         """The place of the last visit with such work; −1 if there was none."""
@@ -116,11 +119,12 @@ class Evidence:
         if reading.doubtful is not None:
             return trust(reading, self.visit(order).visited_on, self.facts.instruments, self.as_of)
         key = (reading.instrument, order // 2)
-        if key not in self._trust:
+        known = self._trust.get(key, UNKNOWN)
+        if known is UNKNOWN:
             self._note_calibrations(reading.instrument)
             day = self.visit(order).visited_on
-            self._trust[key] = trust(reading, day, self.facts.instruments, self.as_of)
-        return self._trust[key]
+            known = self._trust[key] = trust(reading, day, self.facts.instruments, self.as_of)
+        return known
 
     def _instrument(self, name: str | None) -> Instrument | None:
         return self.facts.instruments.get(name) if name is not None else None
@@ -135,13 +139,11 @@ class Evidence:
     def span(self, order: int, reading: Reading) -> tuple[float, float]:
         """Where the true value lies, from the reading's comparison and the box's step [base unit]."""
         quantity = QUANTITIES[reading.quantity]
-        if not quantity.steps_up or reading.comparison is not Comparison.EQ:
+        if reading.comparison is not EXACTLY:
             return interval(reading, None)[:2]
-        key = (reading.instrument, order // 2)
-        steps = self._steps.get(key)
-        if steps is None:
-            instrument = self._instrument(reading.instrument)
-            steps = self._steps[key] = steps_on(instrument, self.visit(order).visited_on, self.as_of)
+        if not quantity.steps_up:
+            return reading.value, reading.value
+        steps = steps_on(self._instrument(reading.instrument), self.visit(order).visited_on, self.as_of)
         return interval(reading, steps.get(quantity.unit))[:2]
 
     def stale(self, order: int) -> Reason | None:
@@ -179,8 +181,6 @@ class Evidence:
             (order, reading)
             for point in self.points.get(quantity, ())
             for order, reading in self.series[quantity, point]
-            if order >= since
-            and reading.comparison is Comparison.EQ
-            and self.visit(order).visited_on >= fitted_on
+            if order >= since and reading.comparison is EXACTLY and self.visit(order).visited_on >= fitted_on
         ]
         return max(found, key=lambda entry: (entry[0], entry[1].test_point), default=None)

@@ -40,18 +40,13 @@ def bounds_at(limit: Limit, point: str, evidence: Evidence) -> tuple[Bounds, Rea
     if limit.relative_to is None:
         return resolve(limit, None), None
     if limit.relative_to is RelativeTo.SET_UP:
-        base = evidence.record.set_up.get((limit.quantity, point))
-        doubt = (
-            None
-            if base is not None
-            else Reason("no_set_up_value", "no set-up value is kept for this test point")
-        )
+        base, doubt = evidence.record.set_up.get((limit.quantity, point)), None
+        lacks = Reason("no_set_up_value", "no set-up value is kept for this test point")
     else:
         unit = QUANTITIES[limit.quantity].unit
         base, doubt = evidence.rated(limit.relative_to, unit)
-        if base is None:
-            doubt = Reason("no_rated_value", f"the fitted relay has no {RATED[limit.relative_to, unit][0]}")
-    return (OPEN if base is None else resolve(limit, base)), doubt
+        lacks = Reason("no_rated_value", f"the fitted relay has no {RATED[limit.relative_to, unit][0]}")
+    return (OPEN, lacks) if base is None else (resolve(limit, base), doubt)
 
 
 def lacking(
@@ -104,20 +99,31 @@ def open_failure(
     circuit, or a return from out of use. All are judged by the bounds now in force.
     """
     bounds = wrong_side(bounds)
-    if bounds.min is None and bounds.max is None:
+    if _none_fails(series, bounds):
         return None
     driest_pass = WETTER_THAN_ANY + 1
     for order, reading in reversed(series):
         if order < evidence.fresh_from or driest_pass == 0:
             return None
         ballast = evidence.visit(order).ballast
-        word = weigh(*evidence.span(order, reading), bounds).word
+        word = weigh(*evidence.span(order, reading), bounds)[0]
         if word is OUTSIDE:
             if driest_pass > (0 if ballast is None else ballast.wetness):
                 return order, reading
         elif word is not UNPROVEN and _proved(limit, order, reading, evidence):
             driest_pass = min(driest_pass, WETTER_THAN_ANY if ballast is None else ballast.wetness)
     return None
+
+
+def _none_fails(series: Series, bounds: Bounds) -> bool:
+    """Whether it is plain at a glance that no reading is outside; False also where that takes a closer look.
+
+    No quantity that wetness matters to has a box that leaves the true value below the reading.
+    """
+    if bounds.max is not None:
+        return False
+    least = bounds.min
+    return least is None or all(reading.value > least for _, reading in series)
 
 
 def _proved(limit: Limit, order: int, reading: Reading, evidence: Evidence) -> bool:

@@ -44,7 +44,7 @@ def _train_seen(place: int, evidence: Evidence, applies: Applying) -> bool:
 def _inside(order: int, reading: Reading, evidence: Evidence, applies: Applying) -> bool:
     required = evidence.record.required_test_points
     words = [
-        weigh(*evidence.span(order, reading), bounds_at(limit, reading.test_point, evidence)[0]).word
+        weigh(*evidence.span(order, reading), bounds_at(limit, reading.test_point, evidence)[0])[0]
         for limit, missing in applies.limits
         if limit.quantity == reading.quantity
         and missing is None

@@ -102,8 +102,11 @@ def steps_on(instrument: Instrument | None, day: date, as_of: date) -> Mapping[s
     """
     if instrument is None or not instrument.calibrations:
         return {}
-    made = [one for one in instrument.calibrations if one.calibrated_on <= min(day, as_of)]
-    return made[-1].step if made else instrument.calibrations[0].step
+    known = min(day, as_of)
+    for calibration in reversed(instrument.calibrations):
+        if calibration.calibrated_on <= known:
+            return calibration.step
+    return instrument.calibrations[0].step
 
 
 def interval(reading: Reading, step: float | None) -> Interval:

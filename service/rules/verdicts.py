@@ -12,7 +12,7 @@ from datetime import datetime
 
 from service.rules.bounds import OPEN, Weighed, resolve, weigh, wrong_side
 from service.rules.editions import Bound, Bounds, Edition, Limit
-from service.rules.evidence import Evidence
+from service.rules.evidence import Evidence, Series
 from service.rules.facts import Concession, Instrument, Reading, SectionFacts, SectionRecord, Visit
 from service.rules.limits import applying
 from service.rules.proof import DRIEST, bounds_at, covers, lacking, named, open_failure
@@ -23,6 +23,7 @@ from service.rules.words import Comparison, Hazard, Reason, Stage, VerdictWord
 __all__ = ["Reason", "Verdict", "found_outside", "judge_combination", "judge_limit"]
 
 OUTSIDE, UNPROVEN, NOT_MEASURED = VerdictWord.OUTSIDE, VerdictWord.UNPROVEN, VerdictWord.NOT_MEASURED
+NEAR, WITHIN = VerdictWord.NEAR, VerdictWord.WITHIN
 
 BEYOND_CONCESSION = Reason("beyond_concession", "outside what the concession allows too")
 
@@ -79,33 +80,33 @@ def judge_limit(
         values = registered(evidence.record, limit.quantity)
         return [_of_register(edition, limit, missing, one, concessions) for one in values]
     required = evidence.record.required_test_points
-    points: tuple[str | None, ...] = required
-    lacks = missing
-    if limit.test_points is not None:
-        points = named(limit.test_points, required)
-    elif not required:
-        points, lacks = (None,), missing or "required_test_points"
-    found = [_at(edition, limit, lacks, point, evidence, concessions) for point in points]
-    if missing is None and limit.test_points is None:
-        others = [point for point in evidence.points.get(limit.quantity, ()) if point not in required]
-        judged = [_of_series(edition, limit, point, evidence, concessions) for point in others]
-        found += [verdict for verdict in judged if verdict.verdict is OUTSIDE]
+    points = required if limit.test_points is None else named(limit.test_points, required)
+    if limit.test_points is None and not required:
+        return [
+            _unread(edition, limit, None, UNPROVEN, (_attribute_missing(missing or "required_test_points"),))
+        ]
+    if missing is not None:
+        return [_unread(edition, limit, point, UNPROVEN, (_attribute_missing(missing),)) for point in points]
+    found, read = [], 0
+    for point in points:
+        series = evidence.series.get((limit.quantity, point))
+        if series is None:
+            found.append(_unread(edition, limit, point, NOT_MEASURED, ()))
+        else:
+            read += 1
+            found.append(_of_series(edition, limit, series, evidence, concessions))
+    if limit.test_points is None and len(evidence.points.get(limit.quantity, ())) > read:
+        found += _elsewhere(edition, limit, evidence, concessions)
     return found
 
 
-def _at(
-    edition: Edition,
-    limit: Limit,
-    missing: str | None,
-    point: str | None,
-    evidence: Evidence,
-    concessions: Concessions,
-) -> Verdict:
-    if missing is not None or point is None:
-        return _unread(edition, limit, point, UNPROVEN, (_attribute_missing(missing),))
-    if (limit.quantity, point) not in evidence.series:
-        return _unread(edition, limit, point, NOT_MEASURED, ())
-    return _of_series(edition, limit, point, evidence, concessions)
+def _elsewhere(edition: Edition, limit: Limit, evidence: Evidence, concessions: Concessions) -> list[Verdict]:
+    """What readings at test points that are not required condemn."""
+    read = evidence.points.get(limit.quantity, ())
+    others = [point for point in read if point not in evidence.record.required_test_points]
+    series = [evidence.series[limit.quantity, point] for point in others]
+    judged = [_of_series(edition, limit, one, evidence, concessions) for one in series]
+    return [verdict for verdict in judged if verdict.verdict is OUTSIDE]
 
 
 def _attribute_missing(attribute: str | None) -> Reason:
@@ -113,43 +114,58 @@ def _attribute_missing(attribute: str | None) -> Reason:
 
 
 def _of_series(
-    edition: Edition, limit: Limit, point: str, evidence: Evidence, concessions: Concessions
+    edition: Edition, limit: Limit, series: Series, evidence: Evidence, concessions: Concessions
 ) -> Verdict:
     """The verdict at a test point that was read: by its newest reading, and what lies open before it."""
-    quantity = QUANTITIES[limit.quantity]
-    series = evidence.series[limit.quantity, point]
     order, reading = series[-1]
-    bounds, doubt = bounds_at(limit, point, evidence)
+    visit = evidence.visits[order // 2]
+    bounds, doubt = bounds_at(limit, reading.test_point, evidence)
     span = evidence.span(order, reading)
     weighed = weigh(*span, bounds)
-    word, hazard = weighed.word, weighed.hazard
-    stale = None if quantity.of_item else evidence.stale(order)
-    reasons: tuple[Reason, ...]
-    if stale is not None:
-        word, reasons = UNPROVEN, (stale,)
-    else:
-        reasons = lacking(word, limit, order, reading, evidence)
-        if doubt is not None:
-            reasons = (*reasons, doubt)
-        if reasons and word is not OUTSIDE:
-            word = UNPROVEN
-        if quantity.wetness_matters and _may_hide_failure(word, hazard, evidence.visit(order)):
-            failure = open_failure(series, limit, bounds, evidence)
-            if failure is not None:
-                word, hazard, span = OUTSIDE, Hazard.WRONG_SIDE, evidence.span(*failure)
-                reasons = (_not_repeated_dry(failure, evidence), *reasons)
-    verdict = _of_reading(edition, limit, bounds, evidence.visit(order), reading, weighed)
-    verdict.verdict, verdict.hazard, verdict.reasons = word, hazard, reasons
-    if word is OUTSIDE and limit.limit in concessions:
+    verdict = _of_reading(edition, limit, bounds, visit, reading, weighed)
+    if _stands(weighed[0], limit, doubt, order, visit, evidence) and evidence.trust(order, reading) is None:
+        return verdict
+    if not QUANTITIES[limit.quantity].of_item and (stale := evidence.stale(order)) is not None:
+        verdict.verdict, verdict.reasons = UNPROVEN, (stale,)
+        return verdict
+    reasons = lacking(weighed[0], limit, order, reading, evidence)
+    if doubt is not None:
+        reasons = (*reasons, doubt)
+    if reasons and verdict.verdict is not OUTSIDE:
+        verdict.verdict = UNPROVEN
+    if QUANTITIES[limit.quantity].wetness_matters and _may_hide_failure(verdict, visit):
+        failure = open_failure(series, limit, bounds, evidence)
+        if failure is not None:
+            verdict.verdict, verdict.hazard = OUTSIDE, Hazard.WRONG_SIDE
+            span = evidence.span(*failure)
+            reasons = (_not_repeated_dry(failure, evidence), *reasons)
+    verdict.reasons = reasons
+    if verdict.verdict is OUTSIDE and limit.limit in concessions:
         _concede(verdict, span, concessions[limit.limit])
     return verdict
 
 
-def _may_hide_failure(word: VerdictWord, hazard: Hazard | None, visit: Visit) -> bool:
+def _stands(
+    word: VerdictWord, limit: Limit, doubt: Reason | None, order: int, visit: Visit, evidence: Evidence
+) -> bool:
+    """Whether only the instrument is left to ask of: a plain, fresh pass in the driest ballast.
+
+    Only spares the common case the questions that follow; they would answer the same.
+    """
+    return (
+        (word is WITHIN or word is NEAR)
+        and order >= evidence.fresh_from
+        and doubt is None
+        and limit.shunt_ohm is None
+        and (visit.ballast in DRIEST or not (limit.ballast_dry or QUANTITIES[limit.quantity].wetness_matters))
+    )
+
+
+def _may_hide_failure(verdict: Verdict, visit: Visit) -> bool:
     """Not if it is outside on the wrong side itself, nor if it passes in the driest: that clears all."""
-    if word is OUTSIDE:
-        return hazard is not Hazard.WRONG_SIDE
-    return word is UNPROVEN or visit.ballast not in DRIEST
+    if verdict.verdict is OUTSIDE:
+        return verdict.hazard is not Hazard.WRONG_SIDE
+    return verdict.verdict is UNPROVEN or visit.ballast not in DRIEST
 
 
 def _not_repeated_dry(failure: tuple[int, Reading], evidence: Evidence) -> Reason:
@@ -221,33 +237,33 @@ def _unread(
 ) -> Verdict:
     """A verdict that rests on no reading: nothing was read, or the register has the value."""
     bounds = OPEN if limit.relative_to is not None else resolve(limit, None)
-    judged = weigh(value, value, bounds) if value is not None else Weighed(word, None, None, None)
+    weighed = (word, None, None, None) if value is None else weigh(value, value, bounds)
     return Verdict(
-        limit=limit.limit,
-        quantity=limit.quantity,
-        test_point=point,
-        verdict=judged.word,
-        hazard=judged.hazard,
-        unit=QUANTITIES[limit.quantity].unit,
-        measured=value,
-        comparison=None,
-        judged=judged.judged,
-        min=bounds.min,
-        near_min=bounds.near_min,
-        near_max=bounds.near_max,
-        max=bounds.max,
-        margin=judged.margin,
-        book=edition.book,
-        edition=edition.edition,
-        clause=limit.clause,
-        confirmed=limit.confirmed,
-        concession=None,
-        visit=None,
-        visited_at=None,
-        stage=None,
-        instrument=None,
-        doubtful=None,
-        reasons=reasons,
+        limit.limit,
+        limit.quantity,
+        point,
+        weighed[0],
+        weighed[1],
+        QUANTITIES[limit.quantity].unit,
+        value,
+        None,
+        weighed[2],
+        bounds.min,
+        bounds.near_min,
+        bounds.near_max,
+        bounds.max,
+        weighed[3],
+        edition.book,
+        edition.edition,
+        limit.clause,
+        limit.confirmed,
+        None,
+        None,
+        None,
+        None,
+        None,
+        None,
+        reasons,
     )
 
 
@@ -312,7 +328,7 @@ def found_outside(
             bounds = bounds_at(limit, point, evidence)[0]
             for order, reading in evidence.series[limit.quantity, point]:
                 weighed = weigh(*evidence.span(order, reading), wrong_side(bounds))
-                if weighed.word is OUTSIDE:
+                if weighed[0] is OUTSIDE:
                     verdict = _of_reading(edition, limit, bounds, visit, reading, weighed)
                     verdict.reasons = lacking(OUTSIDE, limit, order, reading, evidence)
                     found.append(verdict)
