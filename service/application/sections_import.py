@@ -106,7 +106,8 @@ def _plan(connection: Connection, depot: str, file: File, today: date) -> list[_
             found.append(Fault("duplicate", reason, line=item.line, column="section"))
             continue
         change = _Change(item, stored.get(folded.get(fold, "")))
-        if change.stored is not None and sections.unchanged(change.stored.content, item.content):
+        same = stored.get(item.section)
+        if same is not None and sections.unchanged(same.content, item.content):
             continue
         changes.append(change)
         found += [at(fault, item.line) for fault in _faults(change, known, file.missing, today)]

@@ -287,7 +287,11 @@ def test_what_the_rules_take_from_the_equipment(depot: Depot) -> None:
         set_up=(equipment.SetUp(quantity="relay_voltage", test_point="relay_end", value=2.1),),
     )
     depot.section(
-        "TV114", circuit_kind=CircuitKind.DC_AC_IMMUNE, traction=Traction.AC_OVERHEAD, return_rails=1, equipment=stated
+        "TV114",
+        circuit_kind=CircuitKind.DC_AC_IMMUNE,
+        traction=Traction.AC_OVERHEAD,
+        return_rails=1,
+        equipment=stated,
     )
     with depot.service.read() as connection:
         record = status.of_section(connection, depot.depot, "TV114", depot.clock[0]).facts.record
