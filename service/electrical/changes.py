@@ -169,6 +169,7 @@ def with_element(circuit: PlainCircuit, name: str, two_port: TwoPort) -> PlainCi
         raise NonPhysicalError((name,), "the circuit has no such element")
 
     def changed(end: tuple[Element, ...]) -> tuple[Element, ...]:
+        """One end, the element replaced."""
         return tuple(Element(name, two_port) if element.name == name else element for element in end)
 
     return replace(circuit, feed_end=changed(circuit.feed_end), relay_end=changed(circuit.relay_end))

@@ -100,10 +100,12 @@ def forecast(
     still = np.zeros((*found.settled.shape, 5))
 
     def wet(x: Reals) -> Reals:
+        """Pull in wet ballast, the fitted values moved by x."""
         there = with_ballast(moved(found.circuit, x), wet_ohm_km)
         return there.relay.pull_v(operating_point(there).relay_v)
 
     def dry(x: Reals) -> Reals:
+        """Worst drop shunt in dry ballast, the fitted values moved by x."""
         return shunt_limits(with_ballast(moved(found.circuit, x), dry_ohm_km)).drop_shunt_ohm.worst.ohm
 
     wet_pull_v, dry_ohm = wet(still), dry(still)

@@ -177,6 +177,7 @@ def joined(pairs: Iterable[tuple[str, str]]) -> dict[str, str]:
     parent: dict[str, str] = {}
 
     def root(name: str) -> str:
+        """Name that stands for the group."""
         while parent.setdefault(name, name) != name:
             name = parent[name]
         return name
@@ -196,6 +197,7 @@ def with_short(layout: Layout, joint: Joint) -> Layout:
     kept, lost = joint.between
 
     def moved(pair: tuple[str, str]) -> tuple[str, str]:
+        """Name the lost terminal by the kept one."""
         one, other = (kept if terminal == lost else terminal for terminal in pair)
         return one, other
 

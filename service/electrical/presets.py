@@ -48,10 +48,12 @@ def direct_current(
     ----------
     feed : Feed
         Emf [V] behind the regulating resistance [ohm].
-    feed_leads_ohm, relay_leads_ohm : array_like
-        Cables, and the DC resistance of chokes where there are any [ohm].
+    feed_leads_ohm : array_like
+        Cables, and the DC resistance of a choke where there is one [ohm].
     line : Line
         The rails; both of them carry the signal current, so the loop is twice one rail.
+    relay_leads_ohm : array_like
+        As at the feed [ohm].
     relay : Relay
         The relay itself, its own `series_ohm` included.
 
@@ -83,10 +85,16 @@ def ac_single_rail(
     ----------
     frequency_hz : array_like
         Signalling frequency, not zero [Hz].
-    feed, line, relay : Feed, Line, Relay
-        At that frequency.
-    feed_end, relay_end : RailEnd
-        Equipment between them and the rails.
+    feed : Feed
+        At that frequency, as all that follows.
+    feed_end : RailEnd
+        Equipment between the feed and the rails.
+    line : Line
+        The rails.
+    relay_end : RailEnd
+        Equipment between the rails and the relay.
+    relay : Relay
+        By voltage or by torque.
 
     Returns
     -------
@@ -112,12 +120,20 @@ def ac_double_rail(
     ----------
     frequency_hz : array_like
         Signalling frequency, not zero [Hz].
-    feed, line, relay : Feed, Line, Relay
-        At that frequency.
-    feed_end, relay_end : RailEnd
-        Equipment between them and the rails.
-    feed_bond_ohm, relay_bond_ohm : array_like
-        Impedance of the bonds from rail to rail, plain or as `resonated_bond` gives it [ohm].
+    feed : Feed
+        At that frequency, as all that follows.
+    feed_end : RailEnd
+        Equipment between the feed and the rails.
+    feed_bond_ohm : array_like
+        Impedance of the bond from rail to rail, plain or as `resonated_bond` gives it [ohm].
+    line : Line
+        The rails.
+    relay_bond_ohm : array_like
+        As at the feed end [ohm].
+    relay_end : RailEnd
+        Equipment between the rails and the relay.
+    relay : Relay
+        By voltage or by torque.
 
     Returns
     -------
@@ -146,10 +162,12 @@ def audio_frequency(
         Carrier, not zero [Hz].
     transmitter : Feed
         Emf and output impedance as seen at the rails [V, ohm].
-    feed_tuning_ohm, relay_tuning_ohm : array_like
-        What the tuning units and their zone put across the rails at this frequency [ohm].
+    feed_tuning_ohm : array_like
+        What the tuning unit and its zone put across the rails at this frequency [ohm].
     line : Line
         The rails from tuning unit to tuning unit.
+    relay_tuning_ohm : array_like
+        As at the feed end [ohm].
     receiver : Relay
         Input impedance, and the levels at which it shows clear and occupied.
     tuned_zone_m : tuple of float

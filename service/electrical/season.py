@@ -87,11 +87,13 @@ def season(circuit: PlainCircuit, wet_ohm_km: float, dry_ohm_km: float, minimum_
     relay = circuit.relay
 
     def pull(threshold_v: float) -> Margin:
+        """By how much the clear relay is over a voltage, as a share of it."""
         return lambda leakage: (
             relay.pull_v(shunt_limits(_at(circuit, leakage)).relay_clear_v) / threshold_v - 1
         )
 
     def shunted(leakage: Reals) -> Reals:
+        """By how much the drop shunt is over its minimum, as a share of it."""
         margin: Reals = 1 - minimum_shunt_ohm / shunt_limits(_at(circuit, leakage)).drop_shunt_ohm.worst.ohm
         return margin
 

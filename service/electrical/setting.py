@@ -146,6 +146,7 @@ def setting(
     grid = np.linspace(low, high, _POINTS)
 
     def least(values: Reals) -> Reals:
+        """Least margin at each setting."""
         return _least(_margins(change(values), requirements))
 
     best = peak(least, grid)
@@ -241,6 +242,7 @@ def longest(
     lengths = np.linspace(upto_m / _COARSE, upto_m, _COARSE)
 
     def margins(lengths_m: Reals) -> Reals:
+        """Margins at each length, at the best setting where it may be adjusted."""
         if adjustment is None:
             return _margins(with_length(circuit, lengths_m[:, np.newaxis]), requirements)
         return _best_margins(

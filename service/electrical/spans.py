@@ -52,6 +52,7 @@ def crossing(margin: Margin, low: float, high: float) -> float:
     from scipy.optimize import brentq  # slow to import, and most callers never ask
 
     def one(place: float) -> float:
+        """Margin at one place."""
         return float(margin(np.asarray([place]))[0])
 
     return float(brentq(one, low, high, xtol=1e-300, rtol=1e-12))

@@ -253,6 +253,7 @@ def longest_immune(
     positive(("upto_m",), upto_m)
 
     def margin(lengths_m: Reals) -> Reals:
+        """By how much each length is under the limit, as a share of it."""
         at = with_length(circuit, lengths_m)
         return 1 - np.abs(interference(at, current_a, rail_ohm_per_km, train, axle_ohm)) / limit_v
 
