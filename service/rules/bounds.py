@@ -42,10 +42,10 @@ def resolve(limit: Limit, base: float | None) -> Bounds:
         least = most = near_min = near_max = None
         if low is not None:
             least = low.value if base is None else product(low.value, base)
-            near_min = least if low.near_margin is None else total(least, low.near_margin)
+            near_min = None if low.near_margin is None else total(least, low.near_margin)
         if high is not None:
             most = high.value if base is None else product(high.value, base)
-            near_max = most if high.near_margin is None else difference(most, high.near_margin)
+            near_max = None if high.near_margin is None else difference(most, high.near_margin)
         hazards = (None if low is None else low.hazard, None if high is None else high.hazard)
         found = Bounds(least, near_min, near_max, most, *hazards)
         if len(limit.resolved) >= KEPT:

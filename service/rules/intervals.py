@@ -48,12 +48,13 @@ class TaskStatus:
 def add(day: date, duration: str) -> date:
     """`day` plus an ISO 8601 duration such as P3M, P4Y or P14D.
 
-    A day that the month lacks becomes its last (ISO 8601 leaves this open; as `dateutil` has it).
+    A day that the month lacks becomes its last (ISO 8601 leaves this open; as `dateutil` has it),
+    and one beyond the year 9999 the last there is.
 
     Raises
     ------
     ValueError
-        If `duration` is not one in years, months, weeks and days, or ends beyond the year 9999.
+        If `duration` is not one in years, months, weeks and days.
 
     >>> add(date(2024, 1, 31), "P3M"), add(date(2024, 2, 29), "P1Y")
     (datetime.date(2024, 4, 30), datetime.date(2025, 2, 28))
@@ -64,8 +65,8 @@ def add(day: date, duration: str) -> date:
     years, months, weeks, days = (int(part or 0) for part in found.groups())
     try:
         return day + relativedelta(years=years, months=months, weeks=weeks, days=days)
-    except OverflowError as error:
-        raise ValueError(f"{day} plus {duration} is beyond the calendar") from error
+    except (OverflowError, ValueError):
+        return date.max
 
 
 def days_overdue(task: TaskStatus, as_of: date) -> int:

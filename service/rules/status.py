@@ -206,12 +206,14 @@ def _holds_until(
     as_of: date,
 ) -> date | None:
     """The day before the first on which time alone may change the status; None if it never does."""
-    changes = [facts.next_version_on, next_change(editions, as_of), next_calibration_on]
-    for task in tasks:
-        if task.state is TaskState.DUE and task.grace_until_on is not None:
-            changes.append(task.grace_until_on + _DAY)
-        elif task.state is not TaskState.OVERDUE and task.state is not TaskState.DUE:
-            changes.append(task.due_on)
+    begins = [facts.next_version_on, next_change(editions, as_of), next_calibration_on]
+    lasts = [concession.until_on for concession in facts.concessions]
     for concession in facts.concessions:
-        changes += (concession.from_on, concession.until_on + _DAY, concession.ended_on)
-    return min((day - _DAY for day in changes if day is not None and day > as_of), default=None)
+        begins += (concession.from_on, concession.ended_on)
+    for task in tasks:
+        if task.state is TaskState.DUE:
+            lasts += () if task.grace_until_on is None else (task.grace_until_on,)
+        elif task.state is not TaskState.OVERDUE:
+            begins.append(task.due_on)
+    lasts += [day - _DAY for day in begins if day is not None and day > as_of]
+    return min((day for day in lasts if day >= as_of), default=None)
