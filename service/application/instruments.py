@@ -17,7 +17,7 @@ from sqlalchemy.engine import Connection
 
 from service.application import status
 from service.application.section_content import json_value
-from service.errors import ConflictError, Fault, NotAcceptableError, NotFoundError, StaleError
+from service.errors import Fault, NotAcceptableError, NotFoundError, StaleError
 from service.records import bulk, journal
 from service.records.tables import CalibrationRow, InstrumentRow, ReadingRow
 from service.records.unit_of_work import Transaction, local_day
@@ -97,10 +97,8 @@ def put(
 
     Raises
     ------
-    ConflictError
-        If it is to be new and exists.
     NotFoundError, StaleError
-        If it is to be edited and is not there, or not at `version`.
+        If it is to be edited and is not there, or not at `version`; if it is to be new and exists.
     NotAcceptableError
         If an earlier calibration is missing or changed, or the content contradicts itself.
     """
@@ -110,8 +108,11 @@ def put(
     if found:
         raise NotAcceptableError("The instrument cannot be recorded like this; nothing was written.", found)
     content = _in_base_units(content)
-    if stored is not None and json_value(stored.content) == json_value(content):
-        return stored, False
+    if stored is not None:
+        if json_value(stored.content) == json_value(content):
+            return stored, False
+        if version is None:
+            raise StaleError("The depot has an instrument of this name already: edit it with If-Match.")
     kept = Instrument(depot, instrument, 1 if stored is None else stored.version + 1, tx.now, content)
     _write(tx, kept, stored)
     moved = _measured_with(tx.connection, depot, instrument)
@@ -129,9 +130,7 @@ def _stored(connection: Connection, depot: str, instrument: str, version: int | 
         if version is None:
             return None
         raise
-    if version is None:
-        raise ConflictError("The depot has an instrument of this name already: edit it with If-Match.")
-    if stored.version != version:
+    if version not in (None, stored.version):
         raise StaleError("The instrument was changed since it was read.")
     return stored
 

@@ -144,6 +144,8 @@ def of_row(row: Row[Any]) -> Content:
 
 def faults(section: str, content: Content) -> Iterator[Fault]:
     """What is wrong with a section's content by itself, with pointers."""
+    if section in (".", ".."):
+        yield Fault("reserved", "no address can name it", "/section")
     if content.from_km is not None and content.to_km is not None and content.from_km > content.to_km:
         yield Fault("out_of_order", "the section ends before it begins", "/to_km")
     if content.traction is Traction.NONE and content.return_rails:

@@ -7,30 +7,14 @@ from datetime import date, timedelta
 from threading import Barrier, Thread
 
 import pytest
-import sqlalchemy as sa
 
 from service.api.schemas.sections import section_answer
 from service.application import equipment, facts, sections, status
 from service.application.section_content import Boundary, Configuration, json_value
 from service.errors import ConflictError, NotAcceptableError, NotFoundError, ShuntbookError, StaleError
 from service.records import journal
-from service.records.tables import Status as StatusRow
 from service.rules.words import Bonding, CircuitKind, SectionState, Separation, Traction
-from support.register import ENGINEER, OTHER, Depot, plain
-
-
-def kept_status(depot: Depot, name: str) -> sa.Row[tuple[object, ...]]:
-    table = StatusRow.__table__
-    with depot.service.read() as connection:
-        found = connection.execute(
-            sa.select(table).where(table.c.depot == depot.depot, table.c.section == name)
-        )
-        return found.one()
-
-
-def lines(depot: Depot) -> list[dict[str, object]]:
-    with depot.service.read(snapshot=True) as connection:
-        return list(journal.lines(connection, depot.depot))
+from support.register import ENGINEER, OTHER, Depot, kept_status, lines, plain
 
 
 def codes(error: ShuntbookError) -> set[tuple[str, str | None]]:

@@ -7,11 +7,16 @@ from dataclasses import dataclass, replace
 from datetime import UTC, date, datetime, timedelta
 from typing import Any
 
-from service.application import sections
+import sqlalchemy as sa
+
+from service.application import editions, sections
 from service.application.context import Service
 from service.application.section_content import Content
+from service.records import journal
+from service.records.tables import Status as StatusRow
 from service.records.unit_of_work import Actor
 from service.rules.words import CircuitKind, SectionState, Traction
+from support import limit_books
 
 ENGINEER = Actor("engineer-1", "R. Marlowe")
 OTHER = Actor("engineer-2", "J. Abara")
@@ -60,3 +65,28 @@ def plain(**changes: Any) -> Content:
         required_test_points=("feed_end", "relay_end"),
     )
     return replace(content, **changes)
+
+
+def lines(depot: Depot) -> list[dict[str, Any]]:
+    """The depot's journal."""
+    with depot.service.read(snapshot=True) as connection:
+        return list(journal.lines(connection, depot.depot))
+
+
+def kept_status(depot: Depot, section: str) -> sa.Row[Any]:
+    """The row of `status`."""
+    table = StatusRow.__table__
+    query = sa.select(table).where(table.c.depot == depot.depot, table.c.section == section)
+    with depot.service.read() as connection:
+        return connection.execute(query).one()
+
+
+def in_a_book(depot: Depot) -> str:
+    """The name of a book in force today, with one limit and one task; the clock moves on by two days."""
+    draft = limit_books.draft_of(limit_books.edition(tasks=[limit_books.task()]))
+    with depot.service.unit_of_work(limit_books.DRAFTER) as tx:
+        editions.draft(tx, draft)
+    with depot.service.unit_of_work(limit_books.ISSUER) as tx:
+        editions.issue(tx, draft.book, draft.edition, depot.today + timedelta(days=2), expected=1)
+    depot.later(days=2)
+    return draft.book
