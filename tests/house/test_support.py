@@ -2,6 +2,12 @@
 
 from __future__ import annotations
 
+import os
+import shutil
+import subprocess
+import sys
+import tempfile
+import time
 from collections.abc import Awaitable, Callable, MutableMapping
 from pathlib import Path
 from typing import Any
@@ -11,6 +17,7 @@ import psycopg
 import pytest
 
 from support import postgres
+from support.house import ROOT
 from support.server import serve
 
 Message = MutableMapping[str, Any]
@@ -28,6 +35,14 @@ def one_table(url: str) -> None:
 def databases_now(databases: postgres.Databases) -> set[str]:
     with psycopg.connect(plain(databases.server.render_as_string(hide_password=False))) as connection:
         return {name for (name,) in connection.execute("SELECT datname FROM pg_database")}
+
+
+def answers(url: str) -> bool:
+    try:
+        psycopg.connect(url).close()
+    except psycopg.OperationalError:
+        return False
+    return True
 
 
 @pytest.mark.postgres
@@ -61,6 +76,32 @@ def test_a_named_server_is_used_and_left_as_it_was(
         with postgres.databases() as named, named.cloned(lambda _: None):
             assert len(databases_now(postgres_databases) - before) >= 3
     assert databases_now(postgres_databases) - before <= set(postgres_databases._templates.values())
+
+
+@pytest.mark.postgres
+@pytest.mark.skipif(shutil.which("setpriv") is None, reason="only Linux can tie one process to another")
+def test_a_server_does_not_outlive_a_killed_test_run() -> None:
+    script = """if True:
+        import time
+        from support import postgres
+        with postgres.databases() as databases:
+            print(databases.server.render_as_string(), flush=True)
+            time.sleep(60)
+    """
+    with tempfile.TemporaryDirectory(ignore_cleanup_errors=True) as home:
+        Path(home).chmod(0o755)
+        environment = {**os.environ, "PYTHONPATH": str(ROOT / "tests"), "TMPDIR": home}
+        environment.pop("SHUNTBOOK_TEST_POSTGRES", None)
+        command = [sys.executable, "-c", script]
+        with subprocess.Popen(command, env=environment, stdout=subprocess.PIPE, text=True) as killed:
+            assert killed.stdout is not None
+            url = plain(killed.stdout.readline().strip())
+            assert answers(url)
+            killed.kill()
+        deadline = time.monotonic() + 20
+        while answers(url):
+            assert time.monotonic() < deadline
+            time.sleep(0.05)
 
 
 def test_unusable_binaries_are_named_with_the_reason(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:

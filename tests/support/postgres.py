@@ -156,7 +156,7 @@ def _running(binaries: Path) -> Iterator[URL]:
         settings = [f"--{name}={value}" for name, value in SETTINGS.items()]
         with log.open("w") as output:
             process = subprocess.Popen(
-                [binaries / "postgres", "-D", data, "-k", home, "-p", str(port), *settings],
+                [*_ends_with_us(), binaries / "postgres", "-D", data, "-k", home, "-p", str(port), *settings],
                 stdout=output,
                 stderr=output,
                 cwd=home,
@@ -174,6 +174,12 @@ def _running(binaries: Path) -> Iterator[URL]:
         raise NoPostgresError(f"{error}: {error.stderr.decode(errors='replace')}") from error
     finally:
         shutil.rmtree(home)
+
+
+def _ends_with_us() -> list[str]:
+    """A prefix that stops the server when this process is killed outright; Linux only."""
+    setpriv = shutil.which("setpriv")
+    return [setpriv, "--pdeathsig", "INT"] if setpriv else []
 
 
 def _free_port() -> int:
