@@ -1,4 +1,7 @@
-"""Verdicts on what is not stored: nothing that is sent here is kept."""
+"""Verdicts on what is not stored.
+
+Nothing that is sent here is kept; visits are posted in `visits`.
+"""
 
 from __future__ import annotations
 

@@ -1,4 +1,7 @@
-"""Limit books: list, draft, read, edit, issue, withdraw. They belong to the service, not to a depot."""
+"""Limit books: list, draft, read, edit, issue, withdraw.
+
+They belong to the service: any reader reads them, only a key for every depot writes them.
+"""
 
 from __future__ import annotations
 

@@ -1,4 +1,7 @@
-"""Which limits and tasks apply to one track circuit on a day."""
+"""Which limits and tasks apply to one track circuit on a day.
+
+Whether they are met is answered in `status`.
+"""
 
 from __future__ import annotations
 

@@ -1,4 +1,7 @@
-"""Checks on the wire: a section, the readings of one visit and a book in, verdicts out."""
+"""Checks on the wire: a section, the readings of one visit and a book in, verdicts out.
+
+Sections, readings and verdicts are spelt as everywhere else; only what is asked and answered is here.
+"""
 
 from __future__ import annotations
 

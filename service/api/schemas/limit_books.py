@@ -1,4 +1,7 @@
-"""Limit books on the wire: an edition's content is that of `application.book_content`."""
+"""Limit books on the wire: lists, drafts, edits, issue and withdrawal.
+
+What an edition says is spelt by `application.book_content`, whose models are used as they are.
+"""
 
 from __future__ import annotations
 

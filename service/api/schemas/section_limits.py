@@ -1,4 +1,7 @@
-"""What applies to one track circuit, on the wire: limits and tasks, each with its clause and why."""
+"""What applies to one track circuit, on the wire: limits and tasks, each with its clause and why.
+
+Whether they are met is on the wire in `status`.
+"""
 
 from __future__ import annotations
 
