@@ -63,7 +63,7 @@ _EXAMPLE: dict[str, Any] = {
 _VERDICT: dict[str, Any] = VERDICT | {"visit": None, "visited_at": None}
 
 
-class CalibrationSent(Request):
+class CheckCalibration(Request):
     """`resolution` is the step of a box or the last digit of a meter."""
 
     calibrated_on: date
@@ -73,11 +73,11 @@ class CalibrationSent(Request):
     resolution_unit: str | None = None
 
 
-class InstrumentSent(Request):
+class CheckInstrument(Request):
     """An instrument with all its calibrations; one not sent counts as unknown."""
 
     instrument: Name
-    calibrations: Annotated[list[CalibrationSent], Field(max_length=200)]
+    calibrations: Annotated[list[CheckCalibration], Field(max_length=200)]
 
 
 class CheckSent(Request):
@@ -96,7 +96,7 @@ class CheckSent(Request):
     rail: Rail | None = None
     work_done: Annotated[list[Work], Field(max_length=50)] | None = None
     readings: Annotated[list[ReadingSent], Field(max_length=200)]
-    instruments: Annotated[list[InstrumentSent], Field(max_length=200)] | None = None
+    instruments: Annotated[list[CheckInstrument], Field(max_length=200)] | None = None
 
     def check(self) -> Check:
         """What is asked of the application."""
@@ -179,7 +179,7 @@ def _reading(sent: ReadingSent) -> ReadingDraft:
     )
 
 
-def _instrument(sent: InstrumentSent) -> InstrumentGiven:
+def _instrument(sent: CheckInstrument) -> InstrumentGiven:
     given = tuple(
         CalibrationGiven(one.calibrated_on, one.due_on, one.result, one.resolution, one.resolution_unit)
         for one in sent.calibrations
