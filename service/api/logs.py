@@ -41,7 +41,7 @@ def whereabouts(error: BaseException) -> dict[str, object]:
     """Class and place of an error and of what caused it, without their messages."""
     classes = []
     at: BaseException | None = error
-    while at is not None:
+    while at is not None and len(classes) < 20:  # a chain can be a ring
         classes.append(type(at).__name__)
         at = at.__cause__ or at.__context__
     frames = traceback.extract_tb(error.__traceback__)

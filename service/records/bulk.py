@@ -20,8 +20,7 @@ def _unnest(table: sa.Table, columns: tuple[str, ...], conflict: str) -> sa.Text
     dialect = postgresql.dialect()  # type: ignore[no-untyped-call]
     arrays = []
     for name in columns:
-        kind = table.c[name].type.dialect_impl(dialect)
-        bare = "text" if isinstance(kind, sa.String) else kind.compile(dialect=dialect)
+        bare = table.c[name].type.compile(dialect=dialect).partition(" COLLATE")[0]
         arrays.append(f"CAST(:{name} AS {bare}[])")
     names = ", ".join(columns)
     # names of our own tables only; every value is bound

@@ -88,9 +88,15 @@ def translated() -> Iterator[None]:
     except exc.TimeoutError as error:
         raise UnavailableError("The service is busy; post the same again shortly.") from error
     except exc.DBAPIError as error:
-        raise _meaning(error) from error
+        meaning = _meaning(error)
+        if meaning is error:
+            raise
+        raise meaning from error
     except sqlite3.Error as error:
-        raise _sqlite_meaning(error) from error
+        meaning = _sqlite_meaning(error)
+        if meaning is error:
+            raise
+        raise meaning from error
 
 
 def _meaning(error: exc.DBAPIError) -> Exception:
@@ -99,7 +105,7 @@ def _meaning(error: exc.DBAPIError) -> Exception:
     if isinstance(error.orig, sqlite3.Error):
         return _sqlite_meaning(error.orig, error)
     state = str(getattr(error.orig, "sqlstate", None) or "")
-    if state.startswith("42"):  # undefined table, wrong column: not migrated
+    if state in ("42P01", "42703", "42883"):  # a table, column or function is missing
         return StorageFaultError("The database is not migrated to this version: run `shuntbook migrate`.")
     if state.startswith("53") or state == "25006":
         return UnavailableError("The database has no room or takes no writes at the moment; try again later.")

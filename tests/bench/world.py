@@ -46,9 +46,19 @@ READINGS = (
 )
 """Twelve readings of one visit, all in order."""
 
+REGISTERED = (
+    ("length", "m", 5000.0),
+    ("points_ends", "1", 4.0),
+    ("insulated_joints", "1", 15.0),
+    ("parallel_bonded_length", "m", 50.0),
+    ("interrupter", "1", 1.0),
+    ("bonds_duplicated", "1", 1.0),
+)
+"""What is judged from the register, with its greatest value."""
+
 
 def book_content() -> dict[str, Any]:
-    """Twenty limits on what is read, and one task."""
+    """Nineteen limits and a permitted combination, twenty verdicts in all, and one task."""
     said = {"source": "invented", "confirmed": True, "standing": "practice", "applies": None, "title": None}
     limits = []
     for quantity, test_point, value, unit, _ in READINGS:
@@ -73,15 +83,15 @@ def book_content() -> dict[str, Any]:
                 **said,
             }
         )
-    for index in range(8):
+    for index, (quantity, unit, most) in enumerate(REGISTERED):
         limits.append(
             {
-                "limit": f"length_{index}",
-                "quantity": "length",
-                "unit": "m",
+                "limit": quantity,
+                "quantity": quantity,
+                "unit": unit,
                 "test_points": None,
-                "minimum": None,
-                "maximum": {"value": 5000.0 + index, "hazard": "right_side", "near_margin": None},
+                "minimum": {"value": 0.0, "hazard": "right_side", "near_margin": None},
+                "maximum": {"value": most, "hazard": "right_side", "near_margin": None},
                 "relative_to": None,
                 "ballast": None,
                 "shunt_ohm": None,
@@ -89,6 +99,23 @@ def book_content() -> dict[str, Any]:
                 **said,
             }
         )
+    limits.append(
+        {
+            "limit": "excitation",
+            "quantity": "relay_voltage",
+            "unit": "V",
+            "test_points": ["relay_end"],
+            "minimum": {"value": 1.25, "hazard": "right_side", "near_margin": 0.1},
+            "maximum": {"value": 3.0, "hazard": "wrong_side", "near_margin": 0.1},
+            "relative_to": "relay_pick_up",
+            "ballast": None,
+            "shunt_ohm": None,
+            "clause": "B70",
+            **said,
+        }
+    )
+    permitted = {"circuit_kind": "dc", "traction": "none", "return_rails": None, "clause": "B71"}
+    permitted |= {name: said[name] for name in ("source", "confirmed", "standing")}
     task = {
         "task": "shunt_test",
         "interval": "P3M",
@@ -102,7 +129,7 @@ def book_content() -> dict[str, Any]:
         "clause": "B8",
         **said,
     }
-    return {"dry_ballast_ohm_km": None, "limits": limits, "tasks": [task], "combinations": [], "notes": []}
+    return {"dry_ballast_ohm_km": None, "limits": limits, "tasks": [task], "combinations": [permitted], "notes": []}
 
 
 @dataclass(frozen=True)
@@ -179,7 +206,12 @@ def _sections(connection: sa.Connection, depot: str, names: tuple[str, ...]) -> 
         "book": BOOK,
         "required_test_points": '["feed_end","relay_end"]',
         "adjacent": "[]",
-        "equipment": None,
+        "equipment": '{"schema":1,"circuit_kind":"dc","relay":{"rated_pick_up_v":1.0,"rated_drop_away_v":0.68}}',
+        "points_ends": 0,
+        "insulated_joints": 2,
+        "longest_parallel_m": 0.0,
+        "bonds_duplicated": True,
+        "interrupter_required": False,
     }
     bulk.insert(
         connection, SectionVersion.__table__, [{"depot": depot, "section": name, **same} for name in names]

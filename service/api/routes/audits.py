@@ -17,6 +17,7 @@ from service.application import audits
 from service.reports import weekly_csv, weekly_html, weekly_xlsx
 
 router = APIRouter(tags=["audits"])
+READER = [Depends(needs("read"))]
 
 Which = Annotated[str, Path(pattern=r"^(latest|[0-9]{4}-[0-9]{2}-[0-9]{2})$")]
 """The date of an audit, or the latest."""
@@ -51,10 +52,11 @@ def run_audit(
     return answer(AuditAnswer.model_validate(audits.wire(row)), headers, status=201)
 
 
-@router.get("/v1/depots/{depot}/audits", response_model=Page[AuditAnswer], responses={304: {}})
+@router.get(
+    "/v1/depots/{depot}/audits", dependencies=READER, response_model=Page[AuditAnswer], responses={304: {}}
+)
 def list_audits(
     request: Request,
-    caller: Annotated[Caller, Depends(needs("read"))],
     depot: PathName,
     paged: Annotated[Paging, Depends(paging)],
 ) -> Response:
@@ -71,10 +73,10 @@ def list_audits(
     return answer(page, fresh.headers | link(following))
 
 
-@router.get("/v1/depots/{depot}/audits/{audit}", response_model=AuditAnswer, responses={304: {}})
-def get_audit(
-    request: Request, caller: Annotated[Caller, Depends(needs("read"))], depot: PathName, audit: Which
-) -> Response:
+@router.get(
+    "/v1/depots/{depot}/audits/{audit}", dependencies=READER, response_model=AuditAnswer, responses={304: {}}
+)
+def get_audit(request: Request, depot: PathName, audit: Which) -> Response:
     """One audit, or the latest."""
     service = service_of(request)
     with service.read() as connection:
@@ -87,6 +89,7 @@ def get_audit(
 
 @router.get(
     "/v1/depots/{depot}/audits/{audit}/list",
+    dependencies=READER,
     response_model=WeeklyListAnswer,
     responses={
         200: {"content": {media_type: {} for name, media_type in FORMATS.items() if name != "json"}},
@@ -96,7 +99,6 @@ def get_audit(
 )
 def get_weekly_list(
     request: Request,
-    caller: Annotated[Caller, Depends(needs("read"))],
     depot: PathName,
     audit: Which,
     named: Annotated[Literal["json", "csv", "xlsx", "html"] | None, Query(alias="format")] = None,

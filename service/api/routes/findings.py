@@ -16,12 +16,17 @@ from service.application import findings
 from service.rules.words import FindingKind, FindingState
 
 router = APIRouter(tags=["findings"])
+READER = [Depends(needs("read"))]
 
 
-@router.get("/v1/depots/{depot}/findings", response_model=Page[FindingAnswer], responses={304: {}})
+@router.get(
+    "/v1/depots/{depot}/findings",
+    dependencies=READER,
+    response_model=Page[FindingAnswer],
+    responses={304: {}},
+)
 def list_findings(
     request: Request,
-    caller: Annotated[Caller, Depends(needs("read"))],
     depot: PathName,
     paged: Annotated[Paging, Depends(paging)],
     state: Annotated[FindingState | None, Query()] = None,
@@ -43,10 +48,13 @@ def list_findings(
     return answer(Page(items=items, next=following), fresh.headers | link(following))
 
 
-@router.get("/v1/depots/{depot}/findings/{finding}", response_model=FindingAnswer, responses={304: {}})
-def get_finding(
-    request: Request, caller: Annotated[Caller, Depends(needs("read"))], depot: PathName, finding: PathId
-) -> Response:
+@router.get(
+    "/v1/depots/{depot}/findings/{finding}",
+    dependencies=READER,
+    response_model=FindingAnswer,
+    responses={304: {}},
+)
+def get_finding(request: Request, depot: PathName, finding: PathId) -> Response:
     """One finding with its response."""
     service = service_of(request)
     with service.read() as connection:

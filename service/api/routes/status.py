@@ -12,20 +12,23 @@ from starlette.responses import Response
 
 from service.api import conditional
 from service.api.answers import JSON
-from service.api.deps import Caller, PathName, needs, service_of
+from service.api.deps import PathName, needs, service_of
 from service.api.schemas.status import StatusAnswer
 from service.application import status
 from service.application.answers import status_json
 
 router = APIRouter(tags=["sections"])
+READER = [Depends(needs("read"))]
 
 
 @router.get(
-    "/v1/depots/{depot}/sections/{section}/status", response_model=StatusAnswer, responses={304: {}, 422: {}}
+    "/v1/depots/{depot}/sections/{section}/status",
+    dependencies=READER,
+    response_model=StatusAnswer,
+    responses={304: {}, 422: {}},
 )
 def get_status(
     request: Request,
-    caller: Annotated[Caller, Depends(needs("read"))],
     depot: PathName,
     section: PathName,
     as_of: Annotated[date | None, Query(description="Default: the depot's today")] = None,

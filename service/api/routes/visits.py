@@ -13,7 +13,7 @@ from fastapi import APIRouter, Depends, Query, Request
 from pydantic import AwareDatetime
 from starlette.responses import Response
 
-from service.api import bodies, conditional
+from service.api import bodies, bounds, conditional
 from service.api.answers import JSON, NDJSON, answer
 from service.api.deps import Caller, PathId, PathName, body_of, needs, service_of
 from service.api.paging import Page, Paging, link, paging
@@ -34,9 +34,7 @@ from service.errors import ShuntbookError, TooLargeError, UnparsableError
 from service.records.journal import canonical
 
 router = APIRouter(tags=["visits"])
-
-BATCH = 500
-"""Visits in one batch at the most."""
+READER = [Depends(needs("read"))]
 
 
 def clock_offset_s(request: Request, now: datetime) -> int | None:
@@ -117,7 +115,7 @@ _BATCH_BODY = {
             JSON: {
                 "schema": {
                     "type": "array",
-                    "maxItems": BATCH,
+                    "maxItems": bounds.BATCH_VISITS,
                     "items": {"$ref": "#/components/schemas/VisitSent"},
                 },
                 "example": [VISIT],
@@ -138,7 +136,7 @@ def post_visits(
     request: Request,
     caller: Annotated[Caller, Depends(needs("readings"))],
     depot: PathName,
-    raw: Annotated[bodies.Raw, Depends(bodies.RawBody((JSON, NDJSON), bodies.BODY_BYTES))],
+    raw: Annotated[bodies.Raw, Depends(bodies.RawBody((JSON, NDJSON), bounds.BODY_BYTES))],
 ) -> Response:
     """Store a batch of visits in one transaction; one outcome a visit, in order, even if all are refused."""
     items = list(_lines(raw) if raw.media_type == NDJSON else _array(raw))
@@ -177,8 +175,8 @@ def _name(value: Any) -> str | None:
 
 
 def _counted(items: list[Any]) -> list[Any]:
-    if len(items) > BATCH:
-        raise TooLargeError(f"A batch holds at most {BATCH} visits.")
+    if len(items) > bounds.BATCH_VISITS:
+        raise TooLargeError(f"A batch holds at most {bounds.BATCH_VISITS} visits.")
     return items
 
 
@@ -208,10 +206,11 @@ def _array(raw: bodies.Raw) -> Iterator[Draft | _Unread]:
         yield _read(pydantic_core.to_json(item), item)
 
 
-@router.get("/v1/depots/{depot}/visits", response_model=Page[VisitAnswer], responses={304: {}})
+@router.get(
+    "/v1/depots/{depot}/visits", dependencies=READER, response_model=Page[VisitAnswer], responses={304: {}}
+)
 def list_visits(
     request: Request,
-    caller: Annotated[Caller, Depends(needs("read"))],
     depot: PathName,
     paged: Annotated[Paging, Depends(paging)],
     section: Annotated[str | None, Query(max_length=40)] = None,
@@ -222,11 +221,13 @@ def list_visits(
 
 
 @router.get(
-    "/v1/depots/{depot}/sections/{section}/visits", response_model=Page[VisitAnswer], responses={304: {}}
+    "/v1/depots/{depot}/sections/{section}/visits",
+    dependencies=READER,
+    response_model=Page[VisitAnswer],
+    responses={304: {}},
 )
 def list_section_visits(
     request: Request,
-    caller: Annotated[Caller, Depends(needs("read"))],
     depot: PathName,
     section: PathName,
     paged: Annotated[Paging, Depends(paging)],
@@ -262,10 +263,10 @@ def _page(
     return Response(content, headers=fresh.headers | link(following), media_type=JSON)
 
 
-@router.get("/v1/depots/{depot}/visits/{visit}", response_model=VisitAnswer, responses={304: {}})
-def get_visit(
-    request: Request, caller: Annotated[Caller, Depends(needs("read"))], depot: PathName, visit: PathId
-) -> Response:
+@router.get(
+    "/v1/depots/{depot}/visits/{visit}", dependencies=READER, response_model=VisitAnswer, responses={304: {}}
+)
+def get_visit(request: Request, depot: PathName, visit: PathId) -> Response:
     """One visit, its readings as they were given."""
     service = service_of(request)
     with service.read() as connection:
