@@ -190,7 +190,7 @@ def _in_chunk(table: sa.Table, depot: str, names: list[str]) -> sa.ColumnElement
     """Of one section by equality; of many by range, since `names` are neighbours in order."""
     if len(names) == 1:
         return sa.and_(table.c.depot == depot, table.c.section == names[0])
-    return sa.and_(table.c.depot == depot, table.c.section.between(names[0], names[-1]))
+    return sa.and_(table.c.depot == depot, table.c.section >= names[0], table.c.section <= names[-1])
 
 
 def _versions(connection: Connection, moment: Moment, names: list[str]) -> dict[str, list[Row[Any]]]:
