@@ -220,7 +220,10 @@ class BookCombination(Sourced):
 class BookNote(Sourced):
     """A rule in words that no limit, task or combination can carry; shown, never judged."""
 
-    note: Annotated[str, StringConstraints(min_length=1, max_length=2000)]
+    note: Annotated[
+        str,
+        StringConstraints(min_length=1, max_length=2000, pattern=r"^[^\x00-\x08\x0b\x0c\x0e-\x1f\x7f]*$"),
+    ]
 
 
 class Content(Part):

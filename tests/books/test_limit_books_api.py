@@ -7,7 +7,7 @@ from typing import Any
 
 import pytest
 
-from support.limit_books import Api, edition, limit, task
+from support.limit_books import SOURCE, Api, edition, limit, task
 
 BOOKS = "/v1/limit-books"
 ONE = f"{BOOKS}/house/1"
@@ -153,7 +153,15 @@ def test_a_misspelt_filter_is_refused(api: Api) -> None:
 
 
 def test_limits_of_a_section(api: Api) -> None:
-    tag = drafted(api, limits=[limit(applies={"circuit_kinds": ["dc"]})], tasks=[task()])
+    yearly = task(task="dry_round", interval=None, window={"first": "06-01", "last": "09-30"})
+    short = {"quantity": "drop_shunt", "unit": "mOhm", "under": 700, "interval": "P1M"}
+    permitted = {"circuit_kind": "dc", "traction": "none", "return_rails": [0]} | SOURCE
+    tag = drafted(
+        api,
+        limits=[limit(applies={"circuit_kinds": ["dc"]})],
+        tasks=[task(shortened=short), yearly],
+        combinations=[permitted],
+    )
     api.shelf.section("AS1")
     issue(api, tag)
     address = "/v1/depots/ashby/sections/AS1/limits"
@@ -166,7 +174,10 @@ def test_limits_of_a_section(api: Api) -> None:
         ("relay_end", 0.5, 0.6),
     ]
     assert (shown["clause"], shown["unit"], shown["missing"]) == ("1.1", "Ohm", None)
-    assert [one["interval"] for one in ahead.json()["tasks"]] == ["P3M"]
+    shunt_test, dry_round = ahead.json()["tasks"]
+    assert (shunt_test["interval"], shunt_test["shortened"]["under"]) == ("P3M", 0.7)
+    assert dry_round["window"] == {"first": "06-01", "last": "09-30"}
+    assert ahead.json()["combinations"] == [permitted]
     again = api.get(f"{address}?as_of=2026-04-01", headers={"If-None-Match": ahead.headers["ETag"]})
     assert again.status_code == 304
     assert api.get("/v1/depots/birchfield/sections/AS1/limits", "bound").status_code == 404
