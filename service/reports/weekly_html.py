@@ -6,6 +6,7 @@ What is said is put together here and in `findings`; how it stands on the page i
 
 from __future__ import annotations
 
+import re
 from base64 import b64encode
 from functools import cache
 from hashlib import sha256
@@ -24,6 +25,8 @@ _HASH = b64encode(sha256(STYLE.encode()).digest()).decode()
 _POLICY = f"default-src 'none'; style-src 'sha256-{_HASH}'; base-uri 'none'; form-action 'none'"
 CONTENT_SECURITY_POLICY = f"{_POLICY}; frame-ancestors 'none'"
 """The header to send with the page: it needs its one style and nothing else. A saved one carries it too."""
+
+_DATE = re.compile(r"(\b[0-9]{4}-[0-9]{2}-[0-9]{2}\b)")
 
 Facts = list[tuple[str, str]]
 
@@ -72,7 +75,6 @@ def _template() -> Template:
     pages.globals.update(style=STYLE, policy=_POLICY)
     pages.filters.update(
         plain=words.plain,
-        interval=words.interval,
         moment=words.moment,
         where=where,
         named=named,
@@ -82,6 +84,10 @@ def _template() -> Template:
         figures=figures,
         facts=facts,
         answered=answered,
+        lateness=lateness,
+        dates=dates,
+        rhythm=rhythm,
+        dated=dated,
     )
     return pages.get_template("weekly.html.jinja")
 
@@ -132,16 +138,14 @@ def facts(finding: Shown, section: Shown, zone: str) -> Facts:
     if verdict is not None:
         found += [("Clause", findings.clause(verdict)), ("Visit", _visit(verdict, zone))]
     if task is not None:
-        late = words.counted(task["days_overdue"], "day") if task["days_overdue"] else ""
-        every = words.interval(task["interval"])
         found += [
-            ("Overdue by", late),
-            ("Due", task["due_on"] or "no day known"),
-            ("Interval", f"{every}, {task['clause']}" if every else task["clause"]),
+            ("Overdue", lateness(task)),
+            ("Dates", dates(task)),
+            ("Interval", rhythm(task)),
             ("Last done", task["last_done_on"] or "never"),
         ]
     found += [
-        ("Concession", f"under {finding['concession']}" if finding["concession"] else ""),
+        ("Concession", finding["concession"] or ""),
         ("Since", f"{finding['opened_on']}, {findings.standing(finding)}"),
     ]
     return [pair for pair in found if pair[1]]
@@ -152,6 +156,30 @@ def _visit(verdict: Shown, zone: str) -> str:
         return ""
     when, stage = words.moment(verdict["visited_at"], zone), words.plain(verdict["stage"])
     return f"{when}, {stage}, {verdict['instrument'] or 'no instrument named'}"
+
+
+def lateness(task: Shown) -> str:
+    """By how much a task is overdue, or that it is due."""
+    late = task["days_overdue"]
+    return words.counted(late, "day") if late else words.plain(task["state"])
+
+
+def dates(task: Shown) -> str:
+    """When a task was due, and until when its grace runs or ran."""
+    if task["due_on"] is None:
+        return "since when it is due is not known"
+    due, grace = f"due {task['due_on']}", task["grace_until_on"]
+    return due if grace in (None, task["due_on"]) else f"{due}, grace until {grace}"
+
+
+def rhythm(task: Shown) -> str:
+    """How often a task is owed, and by which clause."""
+    return ", ".join(part for part in (words.interval(task["interval"]), task["clause"]) if part)
+
+
+def dated(text: str) -> list[str]:
+    """The text in pieces: every second one is a day, which is kept on one line."""
+    return _DATE.split(text)
 
 
 def answered(finding: Shown, zone: str) -> Facts:
