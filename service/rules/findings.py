@@ -96,10 +96,15 @@ def findings_of(status: Status, facts: SectionFacts, as_of: date) -> tuple[Findi
         elif task.state is TaskState.DUE and task.due_on is None:
             seeds.append(FindingSeed(FindingKind.NOT_SHOWN, task=task.task))
     seeds += _lapsing(status, facts, as_of)
-    gravest: dict[Identity, FindingSeed] = {}
+    return tuple(sorted(_gravest(seeds), key=_order))
+
+
+def _gravest(seeds: Iterable[FindingSeed]) -> tuple[FindingSeed, ...]:
+    """One seed of each identity."""
+    found: dict[Identity, FindingSeed] = {}
     for seed in sorted(seeds, key=_gravity):
-        gravest.setdefault(identity(seed), seed)
-    return tuple(sorted(gravest.values(), key=_order))
+        found.setdefault(identity(seed), seed)
+    return tuple(found.values())
 
 
 def _of_verdict(verdict: Verdict) -> FindingSeed | None:
@@ -157,14 +162,12 @@ def _order(seed: FindingSeed) -> tuple[int, str, str, str]:
 
 def found_outside_seeds(verdicts: Iterable[Verdict]) -> tuple[FindingSeed, ...]:
     """What a visit found outside a wrong-side limit, from `verdicts.found_outside`: as found only."""
-    as_found = [verdict for verdict in verdicts if verdict.stage is Stage.AS_FOUND]
-    gravest: dict[Identity, FindingSeed] = {}
-    for verdict in as_found:
-        seed = FindingSeed(
-            FindingKind.FOUND_OUTSIDE, verdict.hazard, verdict.quantity, verdict.test_point, verdict=verdict
-        )
-        gravest.setdefault(identity(seed), seed)
-    return tuple(gravest.values())
+    kind = FindingKind.FOUND_OUTSIDE
+    return _gravest(
+        FindingSeed(kind, verdict.hazard, verdict.quantity, verdict.test_point, verdict=verdict)
+        for verdict in verdicts
+        if verdict.stage is Stage.AS_FOUND
+    )
 
 
 def merge(findings: Iterable[Finding], seeds: Iterable[FindingSeed], as_of: date) -> Merged:
