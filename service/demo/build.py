@@ -15,9 +15,8 @@ from zoneinfo import ZoneInfo
 
 import numpy as np
 
-from service.application import access, audits, concessions, depots, editions, findings, instruments
+from service.application import access, audits, concessions, depots, editions, findings, instruments, visits
 from service.application import sections as register
-from service.application import visits
 from service.application.context import Service
 from service.application.status import CLOCK
 from service.application.visit_content import Draft
@@ -32,12 +31,14 @@ from service.demo.weather import weather
 
 DAYS = 730
 WEEKLY_FROM = 42
-"""For so many days before today visits come in by the week and are audited on Mondays; before, by four weeks."""
+"""For so many days before today visits come in by the week, and each week is audited."""
 
+EARLIER_BY = timedelta(days=56)
+"""Before that they come in by batches of so many days, as nobody sees the difference two years on."""
+
+AUDIT_HOUR = 7
 MOST = 500
 """Visits in one batch, as the service takes them from a handheld."""
-
-HOURS_AHEAD = 3600
 
 P = ParamSpec("P")
 T = TypeVar("T")
@@ -64,6 +65,7 @@ class _Story:
     tracks: dict[str, Track]
     versions: Counter[str] = field(default_factory=Counter)
     """Of sections and of instruments."""
+    calibrations: Counter[str] = field(default_factory=Counter)
     counts: Counter[str] = field(default_factory=Counter)
 
     def write(
@@ -134,17 +136,14 @@ def _at(day: date, hour: int) -> datetime:
 
 
 def _ends(now: datetime, today: date, began_on: date) -> Iterator[datetime]:
-    """When visits come in: every four weeks, then on Mondays at seven, at last now."""
+    """When visits come in: seldom at first, then each week on the morning of today's weekday, at last now."""
     weekly_from = today - timedelta(days=WEEKLY_FROM)
-    day = began_on + timedelta(days=28)
+    day = began_on + EARLIER_BY
     while day < weekly_from:
-        yield _at(day, 19)
-        day += timedelta(days=28)
-    day = weekly_from
-    while day < today:
-        if day.weekday() == 0:
-            yield _at(day, 7)
-        day += timedelta(days=1)
+        yield _at(day, AUDIT_HOUR)
+        day += EARLIER_BY
+    for day in (weekly_from + timedelta(weeks=week) for week in range(WEEKLY_FROM // 7)):
+        yield _at(day, AUDIT_HOUR)
     yield now
 
 
@@ -152,7 +151,7 @@ def _open(story: _Story, began_on: date, progress: Callable[[str], None]) -> Non
     """Open the depot, draft the bundled books, issue the house book, record instruments and sections."""
     today = story.day
     story.now = _at(began_on - timedelta(days=4), 9)
-    terms = depots.Terms(DEPOT_TITLE, TIME_ZONE, "monday", 7)
+    terms = depots.Terms(DEPOT_TITLE, TIME_ZONE, depots.WEEKDAYS[today.weekday()], AUDIT_HOUR)
     story.write(crew.MANAGER, depots.create, DEPOT, terms)
     story.write(crew.AUTHOR, editions.load_bundled)
     story.write(crew.ISSUER, editions.issue, BOOK, "1", began_on, expected=1)
@@ -173,12 +172,12 @@ def _record_instruments(story: _Story, today: date, began_on: date) -> None:
     """Put every instrument that has a calibration by now which is not recorded yet."""
     for name, whole in crew.instruments(today, began_on).items():
         known = tuple(one for one in whole.calibrations if one.calibrated_on <= story.day)
-        if known and len(known) != story.counts[f"calibrations of {name}"]:
+        if known and len(known) != story.calibrations[name]:
             version = story.versions[name] or None
             said = replace(whole, calibrations=known)
             kept, _ = story.write(crew.ENGINEER, instruments.put, DEPOT, name, version, said)
             story.versions[name] = kept.version
-            story.counts[f"calibrations of {name}"] = len(known)
+            story.calibrations[name] = len(known)
 
 
 def _bring_register_up(story: _Story, before: date, today: date, began_on: date) -> None:
@@ -220,10 +219,10 @@ def _post(story: _Story, due: Sequence[tuple[date, int, Draft]]) -> None:
 
 
 def _speak(story: _Story, today: date) -> None:
-    """Grant the concession in its time; audit on Mondays, and answer some of what was found."""
-    weeks = (today - story.day).days
+    """Grant the concession in its time; audit each week, and answer some of what was found."""
+    ago = (today - story.day).days
     (long,) = faults.sections("concession_lapsing")
-    if weeks <= 70 and not story.counts["concessions"]:
+    if ago <= 70 and not story.counts["concessions"]:
         asked = concessions.Content(
             section=long,
             limit="length_heavy_catenary",
@@ -240,7 +239,7 @@ def _speak(story: _Story, today: date) -> None:
         )
         story.write(crew.MANAGER, concessions.grant, DEPOT, _new_id(story), asked)
         story.counts["concessions"] += 1
-    if 0 < weeks <= WEEKLY_FROM:
+    if 0 < ago <= WEEKLY_FROM:
         _audit(story)
         _answer(story, today)
 
@@ -255,17 +254,14 @@ def _last_audit(story: _Story) -> None:
     _audit(story)
     with story.service.read() as connection:
         row = audits.get(connection, DEPOT, None)
-    for name, count in audits.wire(row)["counts"].items():
-        story.counts[name] = count
+    story.counts["sections listed"] = audits.wire(row)["counts"]["sections_listed"]
 
 
 def _answer(story: _Story, today: date) -> None:
     """Answer for the failure that was reported, and say what is planned for the blocked drain."""
     reported, blocked = faults.REPORTED[0], faults.sections("low_ballast")[0]
     with story.service.read() as connection:
-        rows = findings.page(
-            connection, DEPOT, state=None, section=None, kind=None, after=None, most=1000
-        )
+        rows = findings.page(connection, DEPOT, state=None, section=None, kind=None, after=None, most=1000)
     for row in rows:
         if row.response is not None:
             continue

@@ -39,7 +39,9 @@ LINES = (
     LineOf("OS", "Ossery loop", CircuitKind.DC_AC_IMMUNE, Traction.NONE, 0, 10, 200, 700, 5),
     LineOf("LQ", "Linden Quay", CircuitKind.AC_SINGLE_RAIL, Traction.DC_THIRD_RAIL, 1, 26, 120, 700, 9),
     LineOf("PS", "Penna Sands", CircuitKind.AC_SINGLE_RAIL, Traction.DC_OVERHEAD, 1, 10, 120, 500, 5),
-    LineOf("TF", "Thornfield underline", CircuitKind.AC_DOUBLE_RAIL, Traction.DC_FOURTH_RAIL, 2, 18, 150, 700),
+    LineOf(
+        "TF", "Thornfield underline", CircuitKind.AC_DOUBLE_RAIL, Traction.DC_FOURTH_RAIL, 2, 18, 150, 700
+    ),
     LineOf("DM", "Dunmere curve", CircuitKind.AC_DOUBLE_RAIL, Traction.DC_THIRD_RAIL, 2, 8, 300, 1000),
     LineOf("MP", "Marrow Point", CircuitKind.AUDIO_FREQUENCY, Traction.AC_OVERHEAD, 2, 26, 320, 900),
     LineOf("SW", "Saltwick spur", CircuitKind.AUDIO_FREQUENCY, Traction.NONE, 0, 6, 320, 800),

@@ -32,6 +32,10 @@ STUB_KM = 0.024
 """Length of a leg beyond its points, which lies in series with a shunt at its far end."""
 
 
+Metered = tuple[str, str, float, str]
+"""Quantity, test point, value and unit, before the meter had its say."""
+
+
 @dataclass(slots=True)
 class _Row:
     """One stage of one call, and what is true then."""
@@ -68,7 +72,7 @@ def _solve(kind: CircuitKind, rows: Sequence[_Row]) -> None:
     point, limits = operating_point(circuit), shunt_limits(circuit)
     relay_v = point.relay_v
     first_m, last_m = circuit.reach_m
-    shunt_ohm = 0.2 if kind is CircuitKind.CODED else 0.5
+    shunt_ohm = _shunt_ohm(kind)
     columns: dict[str, Any] = {
         "relay_v": np.abs(relay_v),
         "relay_a": np.abs(point.relay_current_a),
@@ -126,42 +130,49 @@ def uuid7(milliseconds: int, rng: np.random.Generator) -> str:
 
 
 def _readings(row: _Row, gain: float, rng: np.random.Generator) -> Iterator[ReadingDraft]:
-    """All that is read at one stage."""
-    kind, true = row.call.track.kind, row.true
-
-    def meter(
-        quantity: str, point: str, value: float, unit: str, **said: Any
-    ) -> ReadingDraft:
+    """All that is read at one stage: the volts at every call, the rest at a full test."""
+    stage, instrument = row.stage.value, row.call.meter
+    metered = [*_volts(row), *(_full_test(row) if row.call.full else ())]
+    for quantity, point, value, unit in metered:
         shown = shown_by_meter(value if unit == "Hz" else value * gain)  # counters hold their quartz
-        return ReadingDraft(
-            quantity, point, row.stage.value, "eq", shown, unit, instrument=row.call.meter, **said
-        )
+        shunted = {"shunt_ohm": _shunt_ohm(row.call.track.kind), "source": "shunt"}
+        said: dict[str, Any] = shunted if quantity.startswith("residual") else {}
+        yield ReadingDraft(quantity, point, stage, "eq", shown, unit, instrument, **said)
+    if row.call.full:
+        yield from _shunted(row, rng)
 
+
+def _shunt_ohm(kind: CircuitKind) -> float:
+    """The resistance across the rails while a residual is read, as the house book states it."""
+    return 0.2 if kind is CircuitKind.CODED else 0.5
+
+
+def _volts(row: _Row) -> Iterator[Metered]:
+    """Supply, relay and rails."""
+    kind, true = row.call.track.kind, row.true
     if kind in DC:
-        yield meter("supply_voltage", "feed_end", row.call.track.wiring.emf_v * row.call.supply, "V")
+        yield "supply_voltage", "feed_end", row.call.track.wiring.emf_v * row.call.supply, "V"
     if kind is CircuitKind.AUDIO_FREQUENCY:
-        yield meter("relay_voltage", "relay_end", true["relay_v"] * 1000, "mV")
+        yield "relay_voltage", "relay_end", true["relay_v"] * 1000, "mV"
     elif kind is CircuitKind.CODED:
-        yield meter("relay_current", "relay_end", true["relay_a"] * 1000, "mA")
+        yield "relay_current", "relay_end", true["relay_a"] * 1000, "mA"
     elif kind is not CircuitKind.IMPULSE:
-        yield meter("relay_voltage", "relay_end", true["relay_v"], "V")
+        yield "relay_voltage", "relay_end", true["relay_v"], "V"
     if kind is not CircuitKind.AUDIO_FREQUENCY:
-        yield meter("rail_voltage", "feed_end", true["feed_rail_v"], "V")
-        yield meter("rail_voltage", "relay_end", true["relay_rail_v"], "V")
-    if not row.call.full:
-        return
-    yield from _shunted(row, rng)
+        for end in ("feed", "relay"):
+            yield "rail_voltage", f"{end}_end", true[f"{end}_rail_v"], "V"
+
+
+def _full_test(row: _Row) -> Iterator[Metered]:
+    """What a meter reads besides at a full test."""
+    kind, true = row.call.track.kind, row.true
     if kind in DC:
-        yield meter("rail_current", "feed_end", true["feed_rail_a"] * 1000, "mA")
-        yield meter("rail_current", "relay_end", true["relay_rail_a"] * 1000, "mA")
-        for end in ("feed_end", "relay_end"):
-            residual = true[f"residual_{end}"]
-            yield meter("residual_voltage", end, residual, "V", shunt_ohm=0.5, source="shunt")
+        for end in ("feed", "relay"):
+            yield "rail_current", f"{end}_end", true[f"{end}_rail_a"] * 1000, "mA"
+            yield "residual_voltage", f"{end}_end", true[f"residual_{end}_end"], "V"
     if kind is CircuitKind.CODED:
-        residual = true["residual_a"] * 1000
-        yield meter("residual_current", "relay_end", residual, "mA", shunt_ohm=0.2, source="shunt")
-    for quantity, point, value, unit in _others(row):
-        yield meter(quantity, point, value, unit)
+        yield "residual_current", "relay_end", true["residual_a"] * 1000, "mA"
+    yield from _others(row)
 
 
 def shown_by_meter(value: float) -> float:
@@ -194,13 +205,15 @@ def _shunted(row: _Row, rng: np.random.Generator) -> Iterator[ReadingDraft]:
             if point != "relay_end" or kind not in DC or not isfinite(pick_up):
                 yield boxed("drop_shunt", point, ohm)
                 continue
-            first, second = ("pick_up_shunt", "drop_shunt") if call.swapped else ("drop_shunt", "pick_up_shunt")
+            first, second = (
+                ("pick_up_shunt", "drop_shunt") if call.swapped else ("drop_shunt", "pick_up_shunt")
+            )
             yield boxed(first, point, ohm)
             yield boxed(second, point, max(pick_up, ohm + step))
 
 
-def _others(row: _Row) -> Iterator[tuple[str, str, float, str]]:
-    """Quantity, test point, value and unit of what is read besides, by kind."""
+def _others(row: _Row) -> Iterator[Metered]:
+    """By kind: ballast, stray and earth voltages, angle, joints, frequency, and the call's extras."""
     call, track, true = row.call, row.call.track, row.true
     constants, kind = track.constants, track.kind
     if kind in DC and track.wiring.length_m >= 400:

@@ -19,12 +19,12 @@ from service.demo.lines import BOOK
 from service.demo.tracks import DC, Track
 from service.demo.wiring import LOCAL_V, VANE, ZONE_M, circuits, steady
 from service.electrical.circuit import operating_point
-from service.rules.words import Bonding, CircuitKind, Traction
+from service.rules.words import Bonding, CircuitKind, SectionState, Traction
 
 FIXED_OHM = 1.0
 """Of the feed's resistance, what is cable; the rest is adjustable."""
 
-DRY_STEP_OHM = 0.1
+STEP_OHM = 0.1
 
 
 def content(track: Track, day: date) -> Content:
@@ -44,7 +44,7 @@ def content(track: Track, day: date) -> Content:
         return_rails=track.of.return_rails,
         place=track.place,
         sleepers=track.sleepers,
-        commissioned_on=track.commissioned_on,
+        commissioned_on=track.commissioned_on if track.state is not SectionState.PLANNED else None,
         book=BOOK,
         configuration=Configuration(
             points_ends=len(track.legs),
@@ -101,10 +101,9 @@ def _equipment(track: Track, day: date) -> parts.Common:
         common |= {"frequency_hz": wiring.frequency_hz, "relay": vane}
         return _double_rail(track, common) if _bonded(track) else parts.AcSingleRailEquipment(**common)
     if kind is CircuitKind.AUDIO_FREQUENCY:
-        zones = {"feed_tuned_zone_m": ZONE_M, "relay_tuned_zone_m": ZONE_M}
-        receiver = parts.ImmuneRelay(**relay)
+        common |= {"feed_tuned_zone_m": ZONE_M, "relay_tuned_zone_m": ZONE_M}
         return parts.AudioFrequencyEquipment(
-            frequency_hz=wiring.frequency_hz, relay=receiver, **zones, **common
+            frequency_hz=wiring.frequency_hz, relay=parts.ImmuneRelay(**relay), **common
         )
     if kind is CircuitKind.IMPULSE:
         loop_ohm = 20.0 if track.receivers == 1 else 10.0
@@ -137,7 +136,6 @@ def _double_rail(track: Track, common: dict[str, Any]) -> parts.AcDoubleRailEqui
 
 def _feed(track: Track, day: date) -> parts.Feed:
     wiring = track.wiring
-    fixed = {"emf_low_v": round(wiring.emf_v * 0.97, 2), "emf_high_v": round(wiring.emf_v * 1.03, 2)}
     if _jointless(track):
         adjusting: dict[str, Any] = {"series_ohm": (wiring.feed_ohm, 0.0)}
     else:
@@ -147,7 +145,7 @@ def _feed(track: Track, day: date) -> parts.Feed:
             "adjustable_ohm": round(ohm, 3),
             "adjustable_from_ohm": 0.0,
             "adjustable_to_ohm": 100.0 if _bonded(track) else 12.0,
-            "adjustable_step_ohm": DRY_STEP_OHM,
+            "adjustable_step_ohm": STEP_OHM,
         }
     return parts.Feed(
         type="feed set",
@@ -155,7 +153,8 @@ def _feed(track: Track, day: date) -> parts.Feed:
         fitted_on=track.commissioned_on,
         overhauled_on=track.feed_overhauled_on,
         emf_v=wiring.emf_v,
-        **fixed,
+        emf_low_v=round(wiring.emf_v * 0.97, 2),
+        emf_high_v=round(wiring.emf_v * 1.03, 2),
         **adjusting,
     )
 

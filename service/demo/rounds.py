@@ -8,6 +8,7 @@ from __future__ import annotations
 from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass, field
 from datetime import UTC, date, datetime, time, timedelta
+from itertools import pairwise
 from zoneinfo import ZoneInfo
 
 import numpy as np
@@ -17,7 +18,7 @@ from service.demo.lines import TIME_ZONE
 from service.demo.tracks import DC, Setting, Track
 from service.demo.weather import Day
 from service.demo.wiring import VANE
-from service.rules.words import Ballast, BallastState, CircuitKind, Rail
+from service.rules.words import Ballast, BallastState, CircuitKind, Rail, SectionState
 
 DRY_WINDOW = ((6, 1), (9, 30))
 LONG_M = 600
@@ -28,6 +29,9 @@ LATEST_FULL = 78
 NEVER_NEARER = 3
 ADJUSTED = 10
 """How many healthy sections were adjusted a little at some time, as happens."""
+
+STEPPED = 4.0
+"""Feed resistance of which five per cent are two steps of its regulator [ohm]."""
 
 
 @dataclass(slots=True)
@@ -74,13 +78,15 @@ class Diary:
 
 def rounds(tracks: Sequence[Track], diary: Diary) -> list[Call]:
     """Every call of the two years, oldest first."""
-    quiet = [track for track in tracks if track.name not in diary.last_full and track.kind is CircuitKind.DC]
+    quiet = [
+        track for track in tracks if track.name not in diary.last_full and track.wiring.feed_ohm == STEPPED
+    ]
     touched = {quiet[int(i)].name for i in diary.rng.choice(len(quiet), ADJUSTED, replace=False)}
     calls: list[Call] = []
-    for track in tracks:
+    for track in (one for one in tracks if one.state is SectionState.IN_USE):
         fulls = _fulls(track, diary)
         if track.name in touched:
-            factor = float(diary.rng.choice([0.94, 1.05]))
+            factor = float(diary.rng.choice([0.95, 1.05]))
             track.settings.append(Setting(diary.today - timedelta(days=fulls[3]), factor))
         _fit_relay(track, fulls, diary)
         technician = next(one for one in TECHNICIANS if track.of.prefix in one.lines)
@@ -94,9 +100,9 @@ def _fulls(track: Track, diary: Diary) -> list[int]:
     """Days ago of the full tests, the newest first."""
     planted = diary.last_full.get(track.name)
     ago = planted if planted is not None else int(diary.rng.integers(NEVER_NEARER, LATEST_FULL))
-    found = []
+    found: list[int] = []
     while ago < diary.days - 2:
-        found.append(ago if found == [] and planted is not None else _suitable(track, ago, diary))
+        found.append(ago if not found and planted is not None else _suitable(track, ago, diary))
         ago += int(diary.rng.integers(79, 88))
     return found
 
@@ -115,7 +121,7 @@ def _suitable(track: Track, ago: int, diary: Diary) -> int:
 
 def _checks(track: Track, fulls: Sequence[int], diary: Diary) -> Iterator[int]:
     """Days ago of the looks in between."""
-    for newer, older in zip(fulls, fulls[1:], strict=False):
+    for newer, older in pairwise(fulls):
         if older - newer > 20:
             yield (newer + older) // 2
     if track.name not in diary.last_full and fulls[0] > 44:
@@ -130,14 +136,15 @@ def _fit_relay(track: Track, fulls: Sequence[int], diary: Diary) -> None:
         track.relays[1].fitted_on = diary.today - timedelta(days=ago)
 
 
-def _full(
-    track: Track, ago: int, back: int, first: bool, technician: Technician, diary: Diary
-) -> Call:
+def _full(track: Track, ago: int, back: int, first: bool, technician: Technician, diary: Diary) -> Call:
     call = _call(track, ago, technician, diary, full=True)
     tasks, extras, work = ["shunt_test"], set(), list(call.work)
     if track.kind in DC:
         tasks += ["relay_leads_swapped", "voltage_test"]
-        if track.wiring.length_m >= LONG_M and DRY_WINDOW[0] <= (call.day.month, call.day.day) <= DRY_WINDOW[1]:
+        if (
+            track.wiring.length_m >= LONG_M
+            and DRY_WINDOW[0] <= (call.day.month, call.day.day) <= DRY_WINDOW[1]
+        ):
             tasks.append("dry_round")
     if back % 4 == 1 or first:
         tasks.append("bond_inspection")

@@ -100,7 +100,7 @@ class Track:
         return known[-1] if known else 1.0
 
     def ballast_ohm_km(self, wetness: float, *, frozen: bool, day: date) -> float:
-        """Ballast between its wettest and driest, in proportion of logarithms; frozen a half more than dry."""
+        """Ballast between its driest and wettest, by logarithms; frozen a half more than dry."""
         driest, wettest = math.log(self.wiring.dry_ohm_km), math.log(self.wiring.wet_ohm_km)
         ohm_km = math.exp(driest + wetness * (wettest - driest))
         if frozen:
@@ -156,12 +156,10 @@ def _track(line: LineOf, index: int, from_km: float, began_on: date, rng: np.ran
         place=Place.YARD if yard else Place.BLOCK,
         sleepers=Sleepers.WOOD if yard else (Sleepers.CONCRETE, Sleepers.STEEL)[int(rng.random() < 0.1)],
         legs=(("loop",), ("siding",), ("siding", "spur"))[index % 3] if yard else (),
-        relays=[
-            Relay(f"R{line.prefix}-{number}A", began_on - age, round(float(rng.uniform(0.98, 1.02)), 3))
-        ],
+        relays=[Relay(f"R{line.prefix}-{number}A", began_on - age, round(float(rng.uniform(0.98, 1.02)), 3))],
         feed_overhauled_on=began_on - age - timedelta(days=60),
         commissioned_on=began_on - timedelta(days=int(rng.integers(1500, 9000))),
-        constants=_constants(line, rng),
+        constants=_constants(rng),
         receivers=receivers,
         choke=choke,
         catenary_a=catenary_a,
@@ -223,7 +221,7 @@ def _wired(
     return replace(base, coil_ohm=3.0, pick_up_v=0.30, drop_away_v=0.20, feed_ohm=2.0), "code_follower"
 
 
-def _constants(line: LineOf, rng: np.random.Generator) -> dict[str, float]:
+def _constants(rng: np.random.Generator) -> dict[str, float]:
     drawn = {
         "insulation_resistance": rng.uniform(2e6, 2e7),
         "joint_feed_end": rng.uniform(90, 900),

@@ -85,9 +85,7 @@ def circuits(kind: CircuitKind, wirings: Sequence[Wiring], state: State) -> Plai
             return ac_single_rail(of("frequency_hz"), feed, direct, line, direct, vane)
         bond_ohm = of("bond_ohm")
         ends = (RailEnd(of("feed_ratio"), 0.0), RailEnd(of("relay_ratio"), 0.0))
-        return ac_double_rail(
-            of("frequency_hz"), feed, ends[0], bond_ohm, line, bond_ohm, ends[1], vane
-        )
+        return ac_double_rail(of("frequency_hz"), feed, ends[0], bond_ohm, line, bond_ohm, ends[1], vane)
     if kind is CircuitKind.AUDIO_FREQUENCY:
         return EquippedCircuit(of("frequency_hz"), feed, line, plain, (), (), (ZONE_M, ZONE_M))
     return direct_current(feed, 0.0, line, 0.0, plain)
