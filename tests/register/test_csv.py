@@ -334,19 +334,19 @@ def test_a_line_from_an_older_version_is_stale(depot: Depot) -> None:
     ]
 
 
-@pytest.mark.parametrize(
-    ("rows", "expected"),
-    [
-        (["a,in_use,dc,none,middle"], ("name_taken", 2, "section")),
-        (["X,in_use,dc,none,middle", "x,in_use,dc,none,middle"], ("duplicate", 3, "section")),
-        (["B,in_use,dc,none,middle"], ("stale", 2, "version")),
-    ],
-)
-def test_names_in_a_file(depot: Depot, rows: list[str], expected: tuple[str, int, str]) -> None:
+NAMES = [
+    (["a,in_use,dc,none,middle"], ("name_taken", 2, "section")),
+    (["X,in_use,dc,none,middle", "x,in_use,dc,none,middle"], ("duplicate", 3, "section")),
+    (["B,in_use,dc,none,middle"], ("stale", 2, "version")),
+]
+
+
+def test_names_in_a_file(depot: Depot) -> None:
     register(depot)
-    with pytest.raises(NotAcceptableError) as error:
-        imported(depot, made_by_hand(*rows))
-    assert [(fault.code, fault.line, fault.column) for fault in error.value.faults] == [expected]
+    for rows, expected in NAMES:
+        with pytest.raises(NotAcceptableError) as error:
+            imported(depot, made_by_hand(*rows))
+        assert [(fault.code, fault.line, fault.column) for fault in error.value.faults] == [expected]
 
 
 def test_a_file_without_every_column_edits_nothing(depot: Depot) -> None:

@@ -83,26 +83,24 @@ def test_editing_needs_the_newest_version(depot: Depot) -> None:
         depot.write(instruments.put, "SB-22", 2, box())
 
 
-@pytest.mark.parametrize(
-    ("calibrations", "expected"),
-    [
-        ([calibrated(date(2026, 3, 3))], ("in_the_future", "/calibrations/0/calibrated_on")),
-        ([calibrated(date(2026, 2, 1), due_on=date(2026, 1, 1))], ("out_of_order", "/calibrations/0/due_on")),
-        ([calibrated(date(2026, 2, 1))] * 2, ("duplicate", "/calibrations/1/calibrated_on")),
-        (
-            [calibrated(date(2026, 2, 1), resolution=0.1)],
-            ("unit_missing", "/calibrations/0/resolution_unit"),
-        ),
-        (
-            [calibrated(date(2026, 2, 1), resolution=0.1, resolution_unit="ohm")],
-            ("unknown_unit", "/calibrations/0/resolution_unit"),
-        ),
-    ],
-)
-def test_what_cannot_be_is_refused(
-    depot: Depot, calibrations: list[Calibration], expected: tuple[str, str]
-) -> None:
-    assert codes(box(*calibrations), depot) == {expected}
+IMPOSSIBLE: list[tuple[list[Calibration], tuple[str, str]]] = [
+    ([calibrated(date(2026, 3, 3))], ("in_the_future", "/calibrations/0/calibrated_on")),
+    ([calibrated(date(2026, 2, 1), due_on=date(2026, 1, 1))], ("out_of_order", "/calibrations/0/due_on")),
+    ([calibrated(date(2026, 2, 1))] * 2, ("duplicate", "/calibrations/1/calibrated_on")),
+    (
+        [calibrated(date(2026, 2, 1), resolution=0.1)],
+        ("unit_missing", "/calibrations/0/resolution_unit"),
+    ),
+    (
+        [calibrated(date(2026, 2, 1), resolution=0.1, resolution_unit="ohm")],
+        ("unknown_unit", "/calibrations/0/resolution_unit"),
+    ),
+]
+
+
+def test_what_cannot_be_is_refused(depot: Depot) -> None:
+    for calibrations, expected in IMPOSSIBLE:
+        assert codes(box(*calibrations), depot) == {expected}
     with pytest.raises(NotFoundError):
         depot.read(instruments.get, "SB-22")
 

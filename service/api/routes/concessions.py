@@ -1,4 +1,7 @@
-"""Concessions: grant, read, end."""
+"""Concessions: grant, read, end.
+
+Which of them show in a verdict is answered with the status of the section.
+"""
 
 from __future__ import annotations
 

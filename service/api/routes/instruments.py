@@ -1,4 +1,7 @@
-"""Instruments: list, read, record with their calibrations."""
+"""Instruments: list, read, record with their calibrations.
+
+What a calibration moves is judged in the application; readings come with visits.
+"""
 
 from __future__ import annotations
 

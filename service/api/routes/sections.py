@@ -1,4 +1,7 @@
-"""Sections: list as JSON or CSV, record, read, edit, import."""
+"""Sections: list as JSON or CSV, record, read, edit, import.
+
+Their statuses, limits and visits have routes of their own.
+"""
 
 from __future__ import annotations
 

@@ -1,4 +1,7 @@
-"""Concessions on the wire."""
+"""Concessions on the wire: as asked for, as granted, how ended.
+
+Mapped to and from the application member by member.
+"""
 
 from __future__ import annotations
 

@@ -1,4 +1,7 @@
-"""Instruments on the wire."""
+"""Instruments on the wire, with their calibrations.
+
+Mapped to and from the application member by member.
+"""
 
 from __future__ import annotations
 
