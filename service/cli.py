@@ -48,6 +48,49 @@ def serve_api(
     serve(settings, host=host or settings.host, port=settings.port if port is None else port, workers=workers)
 
 
+@cli.command("demo")
+def serve_demo(
+    directory: Annotated[Path, typer.Option(help="Folder for its database and keys.")] = Path(
+        "shuntbook-demo"
+    ),
+    port: Annotated[int | None, typer.Option(help="Port to listen on.", min=0, max=65535)] = None,
+    keep: Annotated[bool, typer.Option("--keep", help="Serve the demo that is there, if one is.")] = False,
+) -> None:
+    """Build an invented depot, show the first lines of its weekly list, and serve it."""
+    from service.app import make_service, serve
+    from service.demo import folder, summary
+
+    file = folder.database(directory)
+    chosen = _settings()
+    settings = chosen.model_copy(
+        update={"database_url": f"sqlite:///{file}", "port": chosen.port if port is None else port}
+    )
+    if not (keep and folder.is_complete(directory)):
+        _build_demo(directory, settings)
+    service = make_service(settings)
+    for line in summary.first_lines(service):
+        print(line)
+    service.database.close()
+    for line in summary.where_to_look(f"http://{settings.host}:{settings.port}", directory / folder.KEYS):
+        print(line, flush=True)
+    serve(settings, host=settings.host, port=settings.port, workers=1)
+
+
+def _build_demo(directory: Path, settings: Settings) -> None:
+    from service.app import make_service
+    from service.demo import folder
+    from service.demo.build import SEED, build
+    from service.records import migrations
+
+    folder.make_fresh(directory)
+    migrations.upgrade(settings.database_url)
+    service = make_service(settings)
+    built = build(service, SEED, secrets.token_bytes, lambda line: print(line, flush=True))
+    service.database.close()
+    folder.write_keys(directory, built.keys)
+    print(", ".join(f"{count} {what}" for what, count in built.counts.items()))
+
+
 @cli.command()
 def migrate() -> None:
     """Bring the database to this version's tables."""
@@ -73,7 +116,7 @@ def worker() -> None:
     service = make_service(settings)
     if service.database.is_sqlite:
         raise StorageFaultError("On SQLite `shuntbook serve` does this itself; a worker needs PostgreSQL.")
-    logs.configure(settings.log_level)
+    logs.to_stderr(settings.log_level)
     work(service)
 
 

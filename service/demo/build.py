@@ -29,6 +29,9 @@ from service.demo.rounds import Diary, rounds
 from service.demo.tracks import Track, lay, set_up_all
 from service.demo.weather import weather
 
+SEED = 7
+"""Of the demo that is served and tested."""
+
 DAYS = 730
 WEEKLY_FROM = 42
 """For so many days before today visits come in by the week, and each week is audited."""

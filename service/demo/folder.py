@@ -38,6 +38,12 @@ def is_demo(path: Path) -> bool:
     return head.startswith(b"SQLite format 3\0") and head[_ID_AT:] == MARKER.to_bytes(4, "big")
 
 
+def is_complete(directory: Path) -> bool:
+    """Whether there is a demo that was built to its end: its keys are written last."""
+    path = database(directory)
+    return path.exists() and is_demo(path) and (directory / KEYS).exists()
+
+
 def make_fresh(directory: Path) -> Path:
     """An empty database with the marker, in place of the demo that was there, if one was.
 
@@ -54,6 +60,7 @@ def make_fresh(directory: Path) -> Path:
         with FileLock(path.with_name(f"{path.name}.lock"), timeout=0):
             if path.exists():
                 _delete(path)
+            (directory / KEYS).unlink(missing_ok=True)
             with closing(sqlite3.connect(path)) as connection:
                 connection.execute(f"PRAGMA application_id = {MARKER}")
     except Timeout:
@@ -71,7 +78,6 @@ def _delete(path: Path) -> None:
 def write_keys(directory: Path, keys: Mapping[str, str]) -> Path:
     """Write the keys by scope, for the owner's eyes only."""
     path = directory / KEYS
-    path.unlink(missing_ok=True)
     descriptor = os.open(path, os.O_WRONLY | os.O_CREAT | os.O_EXCL, 0o600)
     with os.fdopen(descriptor, "w", encoding="utf-8") as file:
         json.dump(dict(keys), file, indent=2)

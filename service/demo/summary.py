@@ -21,9 +21,9 @@ def first_lines(service: Service) -> Iterator[str]:
     audit, counts = weekly.audit, weekly.audit["counts"]
     yield f"{weekly.title}: weekly list as of {audit['audit']}"
     yield (
-        f"{audit['sections_judged']} track circuits judged, {audit['sections_not_judged']} not; within limits "
-        f"{counts['compliance_yes']}, not shown {counts['compliance_not_shown']}, outside "
-        f"{counts['compliance_no']}, overdue {counts['overdue']}"
+        f"{audit['sections_judged']} track circuits judged, {audit['sections_not_judged']} not; "
+        f"shown within limits {counts['compliance_yes']}, not shown {counts['compliance_not_shown']}, "
+        f"outside {counts['compliance_no']}, overdue {counts['overdue']}"
     )
     for shown in weekly.sections[:FIRST]:
         yield f"  {shown['section']:<7}{shown['line_name']:<22}{_gravest(shown)}"
