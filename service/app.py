@@ -57,6 +57,7 @@ def make_service(settings: Settings, clock: Callable[[], datetime] = utc_now) ->
 
 def create_app(settings: Settings, clock: Callable[[], datetime] = utc_now, *, ticks: bool = True) -> FastAPI:
     """The web app. With `ticks`, a SQLite database gets its hourly look at due audits in this process."""
+    logs.configure()
     service = make_service(settings, clock)
     metrics = Metrics()
 
@@ -92,7 +93,7 @@ def create_app(settings: Settings, clock: Callable[[], datetime] = utc_now, *, t
 def app_from_environment() -> FastAPI:
     """The app of one of several server processes."""
     settings = from_environment(os.environ)
-    logs.configure(settings.log_level)
+    logs.to_stderr(settings.log_level)
     return create_app(settings)
 
 
@@ -125,7 +126,7 @@ def serve(settings: Settings, *, host: str, port: int, workers: int) -> None:
         options: dict[str, Any] = {"host": host, "port": port, "log_config": None, "server_header": False}
         options["timeout_graceful_shutdown"] = STOPS_WITHIN_S
         if workers == 1:
-            logs.configure(settings.log_level)
+            logs.to_stderr(settings.log_level)
             uvicorn.run(create_app(settings), **options)
         else:
             uvicorn.run("service.app:app_from_environment", factory=True, workers=workers, **options)

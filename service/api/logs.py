@@ -6,7 +6,7 @@ validation repeat what was sent.
 
 from __future__ import annotations
 
-import sys
+import logging
 import time
 import traceback
 from collections.abc import Callable
@@ -15,31 +15,62 @@ import structlog
 from prometheus_client import CollectorRegistry, Counter, Histogram
 from starlette.datastructures import MutableHeaders
 from starlette.types import ASGIApp, Message, Receive, Scope, Send
+from structlog.types import EventDict, Processor
 
 from service.api.problems import internal
 
 log = structlog.get_logger()
 
-_LEVELS = {"debug": 10, "info": 20, "warning": 30, "error": 40}
+_STAMPS: list[Processor] = [
+    structlog.stdlib.add_log_level,
+    structlog.processors.TimeStamper(fmt="iso", utc=True),
+]
 
 
-def configure(level: str) -> None:
-    """JSON lines on the standard error stream; for the process that serves."""
+def configure() -> None:
+    """Hand our lines to the standard library's logging, which drops them until `to_stderr` is called."""
     structlog.configure(
         processors=[
+            structlog.stdlib.filter_by_level,
             structlog.contextvars.merge_contextvars,
-            structlog.processors.add_log_level,
-            structlog.processors.TimeStamper(fmt="iso", utc=True),
+            *_STAMPS,
+            structlog.stdlib.ProcessorFormatter.wrap_for_formatter,
+        ],
+        wrapper_class=structlog.stdlib.BoundLogger,
+        logger_factory=structlog.stdlib.LoggerFactory(),
+        cache_logger_on_first_use=True,
+    )
+
+
+def to_stderr(level: str) -> None:
+    """JSON lines on the standard error stream, other libraries' too; for a process that serves or works."""
+    configure()
+    formatter = structlog.stdlib.ProcessorFormatter(
+        processors=[
+            structlog.stdlib.ProcessorFormatter.remove_processors_meta,
+            _without_messages,
             structlog.processors.JSONRenderer(ensure_ascii=False),
         ],
-        wrapper_class=structlog.make_filtering_bound_logger(_LEVELS[level]),
-        logger_factory=structlog.PrintLoggerFactory(sys.stderr),
+        foreign_pre_chain=_STAMPS,
     )
+    handler = logging.StreamHandler()
+    handler.setFormatter(formatter)
+    logging.basicConfig(level=level.upper(), handlers=[handler], force=True)
+
+
+def _without_messages(_logger: object, _name: str, event: EventDict) -> EventDict:
+    """An error that another library logs is told by its class and place only."""
+    error = event.pop("exc_info", None)
+    if isinstance(error, tuple):
+        error = error[1]
+    if error is not None:
+        event.update(whereabouts(error))
+    return event
 
 
 def whereabouts(error: BaseException) -> dict[str, object]:
     """Class and place of an error and of what caused it, without their messages."""
-    classes = []
+    classes: list[str] = []
     at: BaseException | None = error
     while at is not None and len(classes) < 20:  # a chain can be a ring
         classes.append(type(at).__name__)

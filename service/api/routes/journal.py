@@ -41,7 +41,7 @@ def follow_journal(
     """Lines after `after`, in commit order; 409 `feed-diverged` if the journal does not hold that line."""
     service = service_of(request)
     wanted = chosen(request, format, _FORMATS)
-    with service.read() as connection:
+    with service.read(snapshot=True) as connection:  # lines are streamed, which needs a transaction
         fresh = conditional.under_depot(request, connection, depot, service.clock())
         if fresh.not_modified is not None:
             return fresh.not_modified
