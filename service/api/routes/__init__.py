@@ -1,6 +1,7 @@
 """Routes, one module a noun; every router of the app stands in `ROUTERS`."""
 
 from service.api.routes import (
+    audits,
     checks,
     concessions,
     depots,
@@ -26,6 +27,7 @@ ROUTERS = (
     concessions.router,
     visits.router,
     status.router,
+    audits.router,
     findings.router,
     journal.router,
     limit_books.router,
