@@ -9,6 +9,7 @@ from __future__ import annotations
 import io
 from collections.abc import Sequence
 from datetime import date, datetime
+from textwrap import wrap
 from typing import TYPE_CHECKING
 
 from service.application.audits import WeeklyList
@@ -23,6 +24,15 @@ if TYPE_CHECKING:
 
 A4 = 9
 """The paper's number in the file format."""
+
+LINE = 15
+"""Points a line of text takes."""
+
+TALLEST = 409
+"""The most points a row may have in the file format."""
+
+BOLDER = 3
+"""Characters fewer a line when bold and indented."""
 
 HEAD_WIDTHS = (22, 100)
 SHAPES = {"text": "General", "number": "General", "day": "yyyy-mm-dd", "time": "yyyy-mm-dd hh:mm"}
@@ -57,9 +67,10 @@ def _about(workbook: Workbook, found: WeeklyList) -> None:
     for place, width in enumerate(HEAD_WIDTHS):
         sheet.set_column(place, place, width)
     sheet.write_string(0, 0, "Weekly list", workbook.add_format({"bold": True, "font_size": 16}))
-    for row, (name, words) in enumerate(head.lines(found), start=1):
-        sheet.write_string(row, 0, name, label)
-        sheet.write_string(row, 1, words, text)
+    for row, line in enumerate(head.lines(found), start=1):
+        sheet.write_string(row, 0, line[0], label)
+        sheet.write_string(row, 1, line[1], text)
+        sheet.set_row(row, _height(line, HEAD_WIDTHS))
     _paper(sheet, found)
     sheet.fit_to_pages(1, 0)
 
@@ -69,17 +80,22 @@ def _table(
 ) -> None:
     """A sheet with one row an entry, its header frozen, filtered and repeated on each printed page."""
     sheet = workbook.add_worksheet(name)
-    header = workbook.add_format(
-        {"bold": True, "text_wrap": True, "valign": "top", "bottom": 2, "bg_color": "#E7E7E7"}
-    )
-    for place, column in enumerate(columns):
+    widths = [column.width for column in columns]
+    headers = [_header(column, found.time_zone) for column in columns]
+    header = {"bold": True, "text_wrap": True, "valign": "top", "bottom": 2, "bg_color": "#E7E7E7"}
+    beside = workbook.add_format({**header, "align": "left", "indent": 1})
+    above = workbook.add_format({**header, "align": "right"})
+    for place, (column, text) in enumerate(zip(columns, headers, strict=True)):
         sheet.set_column(place, place, column.width)
-        sheet.write_string(0, place, _header(column, found.time_zone), header)
+        sheet.write_string(0, place, text, above if column.cell == "number" else beside)
+    sheet.set_row(0, _height(headers, widths))
     shapes = {bold: _shapes(workbook, bold) for bold in (False, True)}
     for row, entry in enumerate(entries, start=1):
         grave = entry.finding.get("hazard") == Hazard.WRONG_SIDE
-        for place, column in enumerate(columns):
-            _write(sheet, row, place, column.value(entry), shapes[grave][column.cell])
+        values = [column.value(entry) for column in columns]
+        for place, (column, value) in enumerate(zip(columns, values, strict=True)):
+            _write(sheet, row, place, value, shapes[grave][column.cell])
+        sheet.set_row(row, _height(values, widths))
     last = len(entries)
     sheet.freeze_panes(1, 1)
     sheet.autofilter(0, 0, last, len(columns) - 1)
@@ -97,11 +113,29 @@ def _header(column: Column, time_zone: str) -> str:
     return f"{column.header} ({time_zone})" if column.cell == "time" else column.header
 
 
+def _height(values: Sequence[Value], widths: Sequence[int]) -> float:
+    """The height of a row in points: not every program fits rows to wrapped text when it opens a file."""
+    lines = 1
+    for value, width in zip(values, widths, strict=True):
+        if isinstance(value, str) and (len(value) > width - BOLDER or "\n" in value):
+            parts = (wrap(part, max(width - BOLDER, 1)) for part in value.split("\n"))
+            lines = max(lines, sum(len(part) or 1 for part in parts))
+    return min(lines * LINE, TALLEST)
+
+
 def _shapes(workbook: Workbook, bold: bool) -> dict[str, Format]:
     """A format a kind of cell; the rows of wrong-side findings are bold, so that they stand out in grey."""
-    common = {"valign": "top", "bottom": 4, "bold": bold}
+    common = {"valign": "top", "bottom": 1, "bottom_color": "#B4BAC0", "bold": bold}
+    beside = {"align": "left", "indent": 1}
     return {
-        cell: workbook.add_format({**common, "num_format": shape, "text_wrap": cell == "text"})
+        cell: workbook.add_format(
+            {
+                **common,
+                **(beside if cell != "number" else {}),
+                "num_format": shape,
+                "text_wrap": cell == "text",
+            }
+        )
         for cell, shape in SHAPES.items()
     }
 

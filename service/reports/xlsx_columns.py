@@ -57,7 +57,7 @@ def _day(header: str, value: Callable[[Entry], str | None]) -> Column:
         day = value(entry)
         return None if day is None else date.fromisoformat(day)
 
-    return Column(header, 11, "day", found)
+    return Column(header, 12, "day", found)
 
 
 def _time(header: str, value: Callable[[Entry], str | None]) -> Column:
@@ -65,7 +65,7 @@ def _time(header: str, value: Callable[[Entry], str | None]) -> Column:
         instant = value(entry)
         return None if instant is None else words.local(instant, entry.time_zone).replace(tzinfo=None)
 
-    return Column(header, 16, "time", found)
+    return Column(header, 18, "time", found)
 
 
 def _yes(value: object) -> str:
@@ -94,23 +94,23 @@ WRONG = (
     _text("Finding", 20, lambda entry: findings.kind(entry.finding)),
     _text("Hazard", 17, lambda entry: findings.hazard(entry.finding)),
     _text("Quantity or task", 18, lambda entry: findings.subject(entry.finding)),
-    _text("Test point", 10, lambda entry: words.at_point(entry.finding["test_point"])),
-    _text("Compared", 8, _judged(lambda verdict: words.COMPARED.get(verdict["comparison"]))),
+    _text("Test point", 11, lambda entry: words.at_point(entry.finding["test_point"])),
+    _text("Compared", 10, _judged(lambda verdict: words.COMPARED.get(verdict["comparison"]))),
     _number("Measured", 9, lambda entry: entry.verdict.get("measured")),
     _number("At least", 9, lambda entry: entry.verdict.get("min")),
     _number("At most", 9, lambda entry: entry.verdict.get("max")),
     _number("Margin", 9, lambda entry: entry.verdict.get("margin")),
-    _text("Unit", 6, _judged(findings.unit)),
+    _text("Unit", 8, _judged(findings.unit)),
     _text("Clause", 18, _judged(findings.clause)),
     _text("Why", 34, lambda entry: "\n".join(findings.why(entry.finding, entry.section))),
 )
 SINCE = (
     _time("Visited", lambda entry: entry.verdict.get("visited_at")),
-    _text("Stage", 9, lambda entry: words.plain(entry.verdict.get("stage"))),
+    _text("Stage", 10, lambda entry: words.plain(entry.verdict.get("stage"))),
     _text("Instrument", 12, lambda entry: entry.verdict.get("instrument")),
-    _text("State", 8, lambda entry: words.plain(entry.finding["state"])),
-    _number("Weeks open", 7, lambda entry: entry.finding["weeks_open"]),
-    _text("Came back", 7, lambda entry: _yes(entry.finding["reopens"])),
+    _text("State", 9, lambda entry: words.plain(entry.finding["state"])),
+    _number("Weeks open", 8, lambda entry: entry.finding["weeks_open"]),
+    _text("Came back", 8, lambda entry: _yes(entry.finding["reopens"])),
     _day("Opened", lambda entry: entry.finding["opened_on"]),
 )
 ANSWERED = (

@@ -261,9 +261,8 @@ def _not_shown() -> list[dict[str, Any]]:
         unproven, quantity="rail_voltage", unit="V", doubtful="ends_swapped", reasons=(swapped,)
     )
     found = [finding("not_shown", one) for one in (unread, unproven, unrated)]
-    undated = task(
-        "bond_inspection", TaskState.DUE, None, None, Reason("attribute_missing", "commissioned_on")
-    )
+    silent = Reason("attribute_missing", "the register does not say: commissioned_on")
+    undated = task("bond_inspection", TaskState.DUE, None, None, silent)
     return [
         section("TV150", *found, finding("doubtful", doubtful), compliance="not_shown"),
         section("TV151", finding("not_shown"), compliance="not_shown", book=None, edition=None),

@@ -5,6 +5,7 @@ from __future__ import annotations
 import io
 import re
 import zipfile
+from dataclasses import replace
 from datetime import datetime
 from typing import Any
 
@@ -144,3 +145,20 @@ def test_equal_lists_give_equal_bytes(found: WeeklyList) -> None:
     first, second = weekly_xlsx.write(found), weekly_xlsx.write(found)
     assert first == second
     assert load_workbook(io.BytesIO(first)).properties.created == moment("2026-11-30 04:01:02")
+
+
+def test_rows_are_as_tall_as_their_text(book: Workbook, found: WeeklyList) -> None:
+    """Not every program fits rows to wrapped text when it opens a file."""
+    sheet = book["Findings"]
+    why = next(cell for cell in sheet[1] if cell.value == "Why").column
+    rusty = next(row for row in sheet.iter_rows() if row[2].value == "poor rail contact")
+    lines = len(rusty[why - 1].value) / 34
+    assert sheet.row_dimensions[rusty[0].row].height >= 15 * lines
+    found.sections[1]["findings"][0]["response"]["action"] = "very long " * 200
+    tall = load_workbook(io.BytesIO(weekly_xlsx.write(found)))["Findings"]
+    assert tall.row_dimensions[3].height == 409  # the most that the format allows (from memory)
+
+
+def test_a_depot_named_with_codes_of_page_headers_keeps_its_name(found: WeeklyList) -> None:
+    named = load_workbook(io.BytesIO(weekly_xlsx.write(replace(found, title="A&B &D"))))
+    assert named["Findings"].oddHeader.left.text == "A&&B &&D"
