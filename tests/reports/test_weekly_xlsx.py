@@ -156,7 +156,9 @@ def test_rows_are_as_tall_as_their_text(book: Workbook, found: WeeklyList) -> No
     assert sheet.row_dimensions[rusty[0].row].height >= 15 * lines
     found.sections[1]["findings"][0]["response"]["action"] = "very long " * 200
     tall = load_workbook(io.BytesIO(weekly_xlsx.write(found)))["Findings"]
-    assert tall.row_dimensions[3].height == 409  # the most that the format allows (from memory)
+    assert tall.row_dimensions[3].height == pytest.approx(
+        409, abs=1
+    )  # the format allows no more (from memory)
 
 
 def test_a_depot_named_with_codes_of_page_headers_keeps_its_name(found: WeeklyList) -> None:
