@@ -58,10 +58,14 @@ def spelt(names: Mapping[str, str], code: str | None) -> str:
 
 
 def at_point(name: str | None) -> str:
-    """A test point; what else a limit was judged at, such as a boundary, under its own name."""
+    """A test point; a leg or a boundary under its own name.
+
+    >>> at_point("relay_end"), at_point("leg:b_2"), at_point("boundary:T1-T2")
+    ('relay end', 'leg b_2', 'boundary T1-T2')
+    """
     if name is None:
         return ""
-    return plain(name) if name in _NAMED_POINTS else name.replace("leg:", "leg ", 1)
+    return plain(name) if name in _NAMED_POINTS else name.replace(":", " ", 1)
 
 
 def number(value: float) -> str:

@@ -220,7 +220,7 @@ def luminance(colour: str) -> float:
 def test_an_empty_list_promises_nothing(nothing_found: WeeklyList) -> None:
     text = Page(weekly_html.write(nothing_found)).text
     assert "No finding is listed. That is what the records show as of Monday 30 November 2026" in text
-    assert "No finding of this kind waits for its report." in text
+    assert "No reading that was found outside a wrong-side limit waits for its report." in text
     assert nothing_found.audit["caution"] in text
 
 
