@@ -200,10 +200,23 @@ class BookFault:
     reason: str
 
 
+class Permission(NamedTuple):
+    """Whether the circuit kind is permitted under the traction; None where unknown return rails decide.
+
+    `limit` is what the combinations say put as a limit, with the clauses of those that decide.
+    """
+
+    permitted: bool | None
+    limit: Limit
+
+
 @dataclass(frozen=True, slots=True)
 class Applying:
-    """What of an edition concerns one section; `missing` names an attribute the register lacks."""
+    """What of an edition concerns one section, each with the attribute that the register lacks.
+
+    `permission` None: the edition names no combinations, so every circuit kind is permitted.
+    """
 
     limits: tuple[tuple[Limit, str | None], ...]
     tasks: tuple[tuple[Task, str | None], ...]
-    combinations: tuple[Combination, ...] = ()
+    permission: Permission | None = None

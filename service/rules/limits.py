@@ -26,6 +26,7 @@ from service.rules.editions import (
     YearlyWindow,
 )
 from service.rules.facts import SectionRecord
+from service.rules.register import permission
 from service.rules.words import EditionState
 
 __all__ = [
@@ -92,7 +93,7 @@ def applying(edition: Edition, record: SectionRecord) -> Applying:
         found = Applying(
             limits=tuple(_kept(edition.limits, record)),
             tasks=tuple(_kept(edition.tasks, record)),
-            combinations=edition.combinations,
+            permission=permission(record, edition.combinations),
         )
         edition.profiles[profile] = found
     return found

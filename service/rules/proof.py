@@ -9,7 +9,7 @@ from service.rules.bounds import OPEN, resolve, weigh, wrong_side
 from service.rules.editions import Bounds, Limit
 from service.rules.evidence import RATED, Evidence, Series
 from service.rules.facts import Reading
-from service.rules.quantities import QUANTITIES
+from service.rules.quantities import QUANTITIES, Quantity
 from service.rules.words import Ballast, Reason, RelativeTo, Source, VerdictWord
 
 OUTSIDE, UNPROVEN = VerdictWord.OUTSIDE, VerdictWord.UNPROVEN
@@ -62,9 +62,9 @@ def lacking(
     if untrusted is not None:
         reasons.append(untrusted)
     if limit.shunt_ohm is not None:
-        shunted = _shunted(limit.shunt_ohm, reading)
-        if shunted is not None:
-            reasons.append(shunted)
+        other = shunted(limit.shunt_ohm, reading)
+        if other is not None:
+            reasons.append(other)
     if limit.ballast_dry:
         ballast = evidence.visit(order).ballast
         if ballast is None:
@@ -78,7 +78,7 @@ def lacking(
     return tuple(reasons)
 
 
-def _shunted(shunt_ohm: float, reading: Reading) -> Reason | None:
+def shunted(shunt_ohm: float, reading: Reading) -> Reason | None:
     """Why a pass was not measured with the limit's own shunt, or a harder one, across the rails."""
     if reading.source is Source.TRAIN:
         return Reason(
@@ -99,7 +99,7 @@ def open_failure(
     circuit, or a return from out of use. All are judged by the bounds now in force.
     """
     bounds = wrong_side(bounds)
-    if _none_fails(series, bounds):
+    if _none_fails(series, bounds, QUANTITIES[limit.quantity]):
         return None
     driest_pass = WETTER_THAN_ANY + 1
     for order, reading in reversed(series):
@@ -115,18 +115,20 @@ def open_failure(
     return None
 
 
-def _none_fails(series: Series, bounds: Bounds) -> bool:
+def _none_fails(series: Series, bounds: Bounds, quantity: Quantity) -> bool:
     """Whether it is plain at a glance that no reading is outside; False also where that takes a closer look.
 
     No quantity that wetness matters to has a box that leaves the true value below the reading.
     """
-    if bounds.max is not None:
+    least, most = bounds.min, bounds.max
+    if most is not None and (least is not None or quantity.steps_up):
         return False
-    least = bounds.min
+    if most is not None:
+        return all(reading.value <= most for _, reading in series)
     return least is None or all(reading.value > least for _, reading in series)
 
 
 def _proved(limit: Limit, order: int, reading: Reading, evidence: Evidence) -> bool:
-    if limit.shunt_ohm is not None and _shunted(limit.shunt_ohm, reading) is not None:
+    if limit.shunt_ohm is not None and shunted(limit.shunt_ohm, reading) is not None:
         return False
     return evidence.trust(order, reading) is None

@@ -15,6 +15,8 @@ from service.rules.facts import Instrument, Reading, Visit
 from service.rules.quantities import QUANTITIES, difference, total
 from service.rules.words import CalibrationResult, Comparison, Reason
 
+OUT_OF_TOLERANCE = CalibrationResult.OUT_OF_TOLERANCE
+
 _in_order = attrgetter("visited_at", "visit")
 
 
@@ -73,24 +75,27 @@ def trust(
 
 
 def _proved(instrument: Instrument, day: date, as_of: date) -> Reason | None:
-    made = [one for one in instrument.calibrations if one.calibrated_on <= as_of]
-    before = [one for one in made if one.calibrated_on <= day]
-    after = [one for one in made if one.calibrated_on > day]
-    same_day = [one for one in before if one.calibrated_on == day]
-    for one in (*before[-1:], *same_day, *after[:1]):
-        if one.result is CalibrationResult.OUT_OF_TOLERANCE:
-            return Reason(
-                "instrument_out_of_tolerance",
-                f"instrument {instrument.instrument} was found out of tolerance on {one.calibrated_on}",
-            )
-    if not before:
+    in_force = bad = None
+    for one in instrument.calibrations:
+        on = one.calibrated_on
+        if on > as_of:
+            break
+        if on >= day and one.result is OUT_OF_TOLERANCE:
+            bad = one
+        if on > day:
+            break
+        in_force = one
+    if bad is None and in_force is not None and in_force.result is OUT_OF_TOLERANCE:
+        bad = in_force
+    name = instrument.instrument
+    if bad is not None:
+        text = f"instrument {name} was found out of tolerance on {bad.calibrated_on}"
+        return Reason("instrument_out_of_tolerance", text)
+    if in_force is None:
+        return Reason("not_calibrated", f"instrument {name} was not calibrated by {day}")
+    if in_force.due_on < day:
         return Reason(
-            "not_calibrated", f"instrument {instrument.instrument} had not been calibrated by {day}"
-        )
-    if before[-1].due_on < day:
-        return Reason(
-            "calibration_lapsed",
-            f"calibration of instrument {instrument.instrument} had been due on {before[-1].due_on}",
+            "calibration_lapsed", f"instrument {name} was due to be calibrated on {in_force.due_on}"
         )
     return None
 

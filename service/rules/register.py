@@ -8,9 +8,9 @@ from __future__ import annotations
 from collections.abc import Iterator
 from typing import NamedTuple
 
-from service.rules.editions import Combination
+from service.rules.editions import Bound, Combination, Limit, Permission
 from service.rules.facts import Adjacent, SectionRecord
-from service.rules.words import Bonding
+from service.rules.words import Bonding, Hazard
 
 PERMITTED = "circuit_kind_permitted"
 """Name and quantity of the limit that a book's permitted combinations make."""
@@ -70,18 +70,13 @@ def _interrupter(record: SectionRecord) -> Registered:
     return Registered(None, None if fitted is None else 0.0, "interrupter_fitted")
 
 
-class Permission(NamedTuple):
-    """Whether the circuit kind is permitted; None where the number of return rails decides and is unknown.
+def permission(record: SectionRecord, combinations: tuple[Combination, ...]) -> Permission | None:
+    """Look the circuit kind under its traction up among the permitted combinations; None if there are none.
 
-    `by` are the combinations that say so: those that permit it, else all that were looked at.
+    Decided by those that permit it, else by those of this kind and traction, else by all.
     """
-
-    permitted: bool | None
-    by: tuple[Combination, ...]
-
-
-def permission(record: SectionRecord, combinations: tuple[Combination, ...]) -> Permission:
-    """Look the section's circuit kind under its traction up among the permitted combinations."""
+    if not combinations:
+        return None
     of_kind = tuple(
         one
         for one in combinations
@@ -90,7 +85,21 @@ def permission(record: SectionRecord, combinations: tuple[Combination, ...]) -> 
     rails = record.return_rails
     permitting = tuple(one for one in of_kind if one.return_rails is None or rails in one.return_rails)
     if permitting:
-        return Permission(True, permitting)
+        return Permission(True, _limit(permitting))
     if of_kind and rails is None:
-        return Permission(None, of_kind)
-    return Permission(False, of_kind or combinations)
+        return Permission(None, _limit(of_kind))
+    return Permission(False, _limit(of_kind or combinations))
+
+
+def _limit(by: tuple[Combination, ...]) -> Limit:
+    return Limit(
+        limit=PERMITTED,
+        quantity=PERMITTED,
+        minimum=Bound(1.0, Hazard.WRONG_SIDE),
+        maximum=None,
+        clause="; ".join(dict.fromkeys(one.clause for one in by)),
+        source="; ".join(dict.fromkeys(one.source for one in by)),
+        confirmed=all(one.confirmed for one in by),
+        standing="; ".join(dict.fromkeys(one.standing for one in by)),
+        test_points=(),
+    )

@@ -16,7 +16,7 @@ from service.rules.facts import Concession, SectionFacts
 from service.rules.intervals import TaskStatus, days_overdue, task_status
 from service.rules.limits import applying, in_force, next_change
 from service.rules.rail_contact import poor_rail_contact
-from service.rules.verdicts import Verdict, judge_combination, judge_limit
+from service.rules.verdicts import Verdict, judge_limit, judge_permission
 from service.rules.words import Compliance, Hazard, Reason, SectionState, TaskState, VerdictWord
 
 __all__ = ["Reason", "Status", "TaskStatus", "Verdict", "days_overdue", "judge", "live"]
@@ -84,9 +84,8 @@ def judge(facts: SectionFacts, book: str | None, editions: tuple[Edition, ...], 
     if edition is not None:
         for limit, missing in applies.limits:
             verdicts.extend(judge_limit(edition, limit, missing, evidence, by_limit))
-        combination = judge_combination(edition, record, by_limit)
-        if combination is not None:
-            verdicts.append(combination)
+        if applies.permission is not None:
+            verdicts.append(judge_permission(edition, applies.permission, record, by_limit))
     tasks = tuple(task_status(task, missing, evidence, by_task) for task, missing in applies.tasks)
     contact = poor_rail_contact(evidence, applies)
     cautions = _cautions(book, edition, applies, contact, verdicts)

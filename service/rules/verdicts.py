@@ -11,16 +11,16 @@ from dataclasses import dataclass, replace
 from datetime import datetime
 
 from service.rules.bounds import OPEN, Weighed, resolve, weigh, wrong_side
-from service.rules.editions import Bound, Bounds, Edition, Limit
+from service.rules.editions import Bounds, Edition, Limit, Permission
 from service.rules.evidence import Evidence, Series
 from service.rules.facts import Concession, Instrument, Reading, SectionFacts, SectionRecord, Visit
 from service.rules.limits import applying
-from service.rules.proof import DRIEST, bounds_at, covers, lacking, named, open_failure
+from service.rules.proof import DRIEST, bounds_at, covers, lacking, named, open_failure, shunted
 from service.rules.quantities import QUANTITIES
-from service.rules.register import PERMITTED, Registered, permission, registered
+from service.rules.register import Registered, registered
 from service.rules.words import Comparison, Hazard, Reason, Stage, VerdictWord
 
-__all__ = ["Reason", "Verdict", "found_outside", "judge_combination", "judge_limit"]
+__all__ = ["Reason", "Verdict", "found_outside", "judge_limit", "judge_permission"]
 
 OUTSIDE, UNPROVEN, NOT_MEASURED = VerdictWord.OUTSIDE, VerdictWord.UNPROVEN, VerdictWord.NOT_MEASURED
 NEAR, WITHIN = VerdictWord.NEAR, VerdictWord.WITHIN
@@ -123,7 +123,8 @@ def _of_series(
     span = evidence.span(order, reading)
     weighed = weigh(*span, bounds)
     verdict = _of_reading(edition, limit, bounds, visit, reading, weighed)
-    if _stands(weighed[0], limit, doubt, order, visit, evidence) and evidence.trust(order, reading) is None:
+    plain = doubt is None and order >= evidence.fresh_from and _stands(weighed[0], limit, reading, visit)
+    if plain and evidence.trust(order, reading) is None:
         return verdict
     if not QUANTITIES[limit.quantity].of_item and (stale := evidence.stale(order)) is not None:
         verdict.verdict, verdict.reasons = UNPROVEN, (stale,)
@@ -145,20 +146,18 @@ def _of_series(
     return verdict
 
 
-def _stands(
-    word: VerdictWord, limit: Limit, doubt: Reason | None, order: int, visit: Visit, evidence: Evidence
-) -> bool:
-    """Whether only the instrument is left to ask of: a plain, fresh pass in the driest ballast.
+def _stands(word: VerdictWord, limit: Limit, reading: Reading, visit: Visit) -> bool:
+    """Whether a fresh word needs no more than a good instrument: a pass with its shunt in the driest ballast.
 
     Only spares the common case the questions that follow; they would answer the same.
     """
-    return (
-        (word is WITHIN or word is NEAR)
-        and order >= evidence.fresh_from
-        and doubt is None
-        and limit.shunt_ohm is None
-        and (visit.ballast in DRIEST or not (limit.ballast_dry or QUANTITIES[limit.quantity].wetness_matters))
-    )
+    if word is not WITHIN and word is not NEAR:
+        return False
+    if limit.shunt_ohm is not None and shunted(limit.shunt_ohm, reading) is not None:
+        return False
+    if limit.ballast_dry or QUANTITIES[limit.quantity].wetness_matters:
+        return visit.ballast in DRIEST
+    return True
 
 
 def _may_hide_failure(verdict: Verdict, visit: Visit) -> bool:
@@ -279,28 +278,18 @@ def _of_register(
     return verdict
 
 
-def judge_combination(edition: Edition, record: SectionRecord, concessions: Concessions) -> Verdict | None:
-    """Whether the book permits the circuit kind under the traction; None if it names no combinations."""
-    if not edition.combinations:
-        return None
-    permitted, by = permission(record, edition.combinations)
-    limit = Limit(
-        limit=PERMITTED,
-        quantity=PERMITTED,
-        minimum=Bound(1.0, Hazard.WRONG_SIDE),
-        maximum=None,
-        clause="; ".join(dict.fromkeys(one.clause for one in by)),
-        source="",
-        confirmed=all(one.confirmed for one in by),
-        standing="",
-    )
+def judge_permission(
+    edition: Edition, permission: Permission, record: SectionRecord, concessions: Concessions
+) -> Verdict:
+    """Whether the book permits the circuit kind under the traction, as a configuration verdict."""
+    permitted, limit = permission
     if permitted is None:
         return _unread(edition, limit, None, UNPROVEN, (_attribute_missing("return_rails"),))
     verdict = _unread(edition, limit, None, UNPROVEN, (), float(permitted))
     if not permitted:
         text = f"{record.circuit_kind} under {record.traction} is not among the book's permitted combinations"
         verdict.reasons = (Reason("combination_not_permitted", text),)
-        _concede(verdict, (0.0, 0.0), concessions.get(PERMITTED, ()))
+        _concede(verdict, (0.0, 0.0), concessions.get(limit.limit, ()))
     return verdict
 
 

@@ -97,9 +97,11 @@ def test_what_rules_a_limit_out_outweighs_what_is_lacking() -> None:
     assert applying(made, record(sleepers=None, place=Place.BLOCK)).limits == ()
 
 
-def test_combinations_come_along() -> None:
-    made = edition(combination("dc", "none"))
-    assert applying(made, record()).combinations == made.combinations
+def test_what_is_permitted_comes_along() -> None:
+    permission = applying(edition(combination("dc", "none")), record()).permission
+    assert permission is not None
+    assert (permission.permitted, permission.limit.clause) == (True, "3.1")
+    assert applying(edition(), record()).permission is None
 
 
 def test_an_edition_remembers_profiles_not_sections() -> None:
