@@ -181,6 +181,29 @@ def revoke_key(label: Annotated[str, typer.Argument(help="The key's label.")]) -
     print(f"revoked {label}")
 
 
+@sections.command("import")
+def import_sections(
+    depot: Annotated[str, typer.Argument(help="The depot.")],
+    file: Annotated[Path, typer.Argument(help="A CSV file, as the API's export writes it.", exists=True)],
+    dry_run: Annotated[bool, typer.Option("--dry-run", help="Say what it would do; write nothing.")] = False,
+) -> None:
+    """Record a whole file of track circuits: all of it, or nothing with every bad line named."""
+    from service.api import section_files
+    from service.app import make_service
+    from service.application import sections_import
+
+    service = make_service(_settings())
+    given = section_files.read(file.read_bytes())
+    if dry_run:
+        with service.read(snapshot=True) as connection:
+            done = sections_import.rehearse(connection, depot, given, service.clock())
+    else:
+        with service.unit_of_work(_actor()) as tx:
+            done = sections_import.run(tx, depot, given)
+    print(f"{'would be ' if dry_run else ''}created {done.created}, changed {done.changed}, ", end="")
+    print(f"left as they are {done.unchanged}")
+
+
 @journal.command("verify")
 def verify_journal(
     records: Annotated[bool, typer.Option("--records", help="Also compare stored visits.")] = False,

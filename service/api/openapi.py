@@ -13,7 +13,7 @@ from fastapi import FastAPI
 from fastapi.dependencies.models import Dependant
 from fastapi.openapi.utils import get_openapi
 from fastapi.routing import APIRoute
-from pydantic import BaseModel
+from pydantic import BaseModel, TypeAdapter
 from pydantic.json_schema import models_json_schema
 
 from service.api import conditional
@@ -31,6 +31,7 @@ _SECURITY = {
         "description": "On GET only: any name, and the access key as password",
     },
 }
+_HEADERS = {401: "WWW-Authenticate", 503: "Retry-After"}
 _PROBLEM = {
     "type": "object",
     "required": ["type", "title", "status", "detail", "instance", "errors"],
@@ -97,11 +98,21 @@ def _complete(made: dict[str, Any], routes: list[APIRoute]) -> None:
         schemas.pop(unused, None)
     schemas["Problem"] = _PROBLEM
     components["securitySchemes"] = _SECURITY
+    _restore_nulls(schemas, routes)
     models = {call.model for route in routes for call in calls(route) if isinstance(call, JsonBody)}
     references = _add_schemas(schemas, models)
     for route in routes:
         for method in route.methods or ():
             _complete_operation(made["paths"][route.path][method.lower()], route, method, references)
+
+
+def _restore_nulls(schemas: dict[str, Any], routes: list[APIRoute]) -> None:
+    """Put answers' schemas in again: the framework drops every null, from examples too."""
+    answers = [(route.name, TypeAdapter(route.response_model)) for route in routes if route.response_model]
+    _, definitions = TypeAdapter.json_schemas(
+        [(name, "serialization", answer) for name, answer in answers], ref_template=f"{_REF}{{model}}"
+    )
+    schemas.update({name: schema for name, schema in definitions["$defs"].items() if name in schemas})
 
 
 def _add_schemas(schemas: dict[str, Any], models: set[type[BaseModel]]) -> dict[type[BaseModel], str]:
@@ -155,7 +166,7 @@ def statuses(route: APIRoute) -> set[int]:
     found = {500, 503}
     for call in calls(route):
         if isinstance(call, Needs):
-            found |= {401, 403, 422}
+            found |= {401, 422} | ({403} if call.scope or call.every_depot else set())
         if isinstance(call, JsonBody | RawBody):
             found |= {400, 413, 415, 422}
         if call is conditional.edits or call is conditional.edits_or_creates:
@@ -167,7 +178,10 @@ def statuses(route: APIRoute) -> set[int]:
 
 def _problem_response(status: int) -> dict[str, Any]:
     titles = [f"{kind.title} (`{kind.type}`)" for kind in KINDS.values() if kind.status == status]
-    return {
+    response: dict[str, Any] = {
         "description": "; ".join(titles),
         "content": {MEDIA_TYPE: {"schema": {"$ref": f"{_REF}Problem"}}},
     }
+    if status in _HEADERS:
+        response["headers"] = {_HEADERS[status]: {"schema": {"type": "string"}}}
+    return response

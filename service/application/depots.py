@@ -86,7 +86,7 @@ def create(tx: Transaction, depot: str, terms: Terms) -> Depot:
     same = sa.select(_depot.c.depot).where(sa.func.lower(_depot.c.depot) == depot.lower())
     if tx.connection.execute(same).first() is not None:
         raise ConflictError("There is already a depot of this name.")
-    values = {"depot": depot, "version": 1, "created_at": tx.now} | _columns(terms)
+    values = {"depot": depot, "version": 1, "epoch": 0, "created_at": tx.now} | _columns(terms)
     tx.connection.execute(sa.insert(_depot).values(values))
     journal.open_stream(tx.connection, depot)
     created = Depot(depot, version=1, created_at=tx.now, sequence=1, **_members(terms))

@@ -15,9 +15,9 @@ from service.api.paging import Page
 from service.api.problem_kinds import KINDS
 from service.api.schemas.service import (
     EditionName,
+    KnownTaskAnswer,
     QuantityAnswer,
     ServiceAnswer,
-    TaskAnswer,
     UnitAnswer,
 )
 from service.application import tasks, visit_content, visits
@@ -71,13 +71,13 @@ def list_quantities() -> Response:
     return answer(Page(items=items, next=None))
 
 
-@router.get("/v1/tasks", response_model=Page[TaskAnswer], dependencies=ANY_KEY)
+@router.get("/v1/tasks", response_model=Page[KnownTaskAnswer], dependencies=ANY_KEY)
 def list_tasks(request: Request) -> Response:
     """Every task that an edition kept here names, drafts included."""
     with service_of(request).read() as connection:
         found = tasks.known(connection)
     items = [
-        TaskAnswer(
+        KnownTaskAnswer(
             task=task.task,
             title=task.title,
             editions=[EditionName(book=book, edition=edition) for book, edition in task.editions],

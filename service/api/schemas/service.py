@@ -78,7 +78,7 @@ class QuantityAnswer(Answer):
     needs_shunt: bool
 
 
-class TaskAnswer(Answer):
+class KnownTaskAnswer(Answer):
     """A task that some issued edition knows, and which."""
 
     model_config = ConfigDict(
