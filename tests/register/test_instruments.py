@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from dataclasses import replace
 from datetime import date, timedelta
+from threading import Barrier, Thread
 from typing import Any
 
 import pytest
@@ -124,14 +125,14 @@ def test_lists_are_in_order_of_name_and_of_one_depot(depot: Depot) -> None:
     assert [(one.instrument, len(one.content.calibrations)) for one in page] == [("a", 1)]
 
 
-def measured(depot: Depot, section: str, instrument: str) -> None:
+def visit(depot: Depot, section: str, instrument: str) -> Draft:
     """A drop shunt of 0.7 ohm at both test points, dry."""
     readings = tuple(
         ReadingDraft("drop_shunt", point, "as_left", "eq", 0.7, "Ohm", instrument)
         for point in ("feed_end", "relay_end")
     )
     number = len(lines(depot))
-    visit = Draft(
+    return Draft(
         f"00000000-0000-7000-8000-{number:012d}",
         section,
         depot.clock[0] - timedelta(hours=1),
@@ -139,7 +140,10 @@ def measured(depot: Depot, section: str, instrument: str) -> None:
         rail="clean",
         readings=readings,
     )
-    (outcome,) = depot.write(visits.post, [visit], None)
+
+
+def measured(depot: Depot, section: str, instrument: str) -> None:
+    (outcome,) = depot.write(visits.post, [visit(depot, section, instrument)], None)
     assert outcome.outcome == "stored"
 
 
@@ -163,3 +167,36 @@ def test_a_calibration_judges_anew_what_was_measured_with_the_instrument(depot: 
         judged = status.of_section(connection, depot.depot, "A", depot.clock[0])
     reasons = {reason.code for verdict in judged.status.verdicts for reason in verdict.reasons}
     assert reasons == {"instrument_out_of_tolerance"}
+
+
+def test_a_calibration_against_a_visit_leaves_what_either_order_would(depot: Depot) -> None:
+    book = in_a_book(depot)
+    depot.section("A", book=book)
+    good = calibrated(depot.today - timedelta(days=30))
+    bad = calibrated(depot.today, result=CalibrationResult.OUT_OF_TOLERANCE)
+    depot.write(instruments.put, "SB-22", None, box(good))
+    taken = visit(depot, "A", "SB-22")
+    barrier = Barrier(2)
+
+    def calibrate() -> None:
+        barrier.wait(timeout=10)
+        depot.write(instruments.put, "SB-22", 1, box(good, bad))
+
+    def post() -> None:
+        barrier.wait(timeout=10)
+        depot.write(visits.post, [taken], None)
+
+    both = [Thread(target=calibrate), Thread(target=post)]
+    for one in both:
+        one.start()
+    for one in both:
+        one.join()
+    assert depot.read(instruments.get, "SB-22").version == 2
+    kept = kept_status(depot, "A")
+    assert kept.compliance == "not_shown"
+    with depot.service.read() as connection:
+        judged = status.of_section(connection, depot.depot, "A", depot.clock[0]).status
+    assert (judged.compliance, judged.next_due_on) == (kept.compliance, kept.next_due_on)
+    assert {reason.code for one in judged.verdicts for reason in one.reasons} == {
+        "instrument_out_of_tolerance"
+    }
