@@ -17,8 +17,8 @@ from service.electrical.circuit import PlainCircuit, ends_of
 from service.electrical.line import UniformLine
 from service.errors import NoAnswerError
 
-# Rounds of false position in AC: the place to about 1e-8 of the section, the value to rounding.
-_ROUNDS = 4
+# Rounds of false position in AC: the value to rounding.
+_ROUNDS = 5
 # Under this attenuation the logarithm in `_crossing` loses more than the straight line does.
 _FLAT_NEPER = 1e-4
 # Circuits worked on at a time: their working arrays stay in the cache.
@@ -223,17 +223,23 @@ def _refined(
     """Place and value of the minimum inside `bracket`, whose slopes are negative and positive.
 
     Between two places the slope is read as p e^v + q e^-v with v along the line's attenuation, which
-    in DC it is; in AC the false position is repeated, the stale end's slope halved (Illinois).
+    in DC it is; in AC the false position is repeated, never leaving the bracket.
     """
     few, condition = track.each(lambda part: part[rows]), condition.each(lambda part: part[rows])
     neper = np.real(few.line.angle)
     (low, high), (fall, rise) = bracket[:, rows], slopes[:, rows]
+    stayed = np.zeros_like(low)
     for _ in range(_ROUNDS if np.iscomplexobj(few.under) else 0):
         place = _crossing(low, high, fall, rise, neper)
         slope = condition.root(*few.seen(place))[1]
         left = slope < 0
+        # An end that stays twice in a row has its slope scaled down (Anderson and Bjorck).
+        held = np.where(left, fall, rise)
+        scale = 1 - np.divide(slope, held, out=np.zeros_like(slope), where=held != 0)
+        scale = np.where(stayed == np.where(left, 1, -1), np.where(scale > 0, scale, 0.5), 1.0)
         low, high = np.where(left, place, low), np.where(left, high, place)
-        fall, rise = np.where(left, slope, fall / 2), np.where(left, rise / 2, slope)
+        fall, rise = np.where(left, slope, fall * scale), np.where(left, rise * scale, slope)
+        stayed = np.where(left, 1, -1)
     place = _crossing(low, high, fall, rise, neper)
     return place, condition.root(*few.seen(place))[0]
 
