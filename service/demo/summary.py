@@ -1,4 +1,7 @@
-"""The first lines of the demo's weekly list, and where to look further, as text for a terminal."""
+"""The first lines of the demo's weekly list, and where to look further, as text for a terminal.
+
+The list itself comes from its audit; pages and files of it are made elsewhere.
+"""
 
 from __future__ import annotations
 
