@@ -189,6 +189,21 @@ def test_each_bad_line_is_named_with_its_column() -> None:
     ]
 
 
+def test_a_layout_is_one_cell_of_json() -> None:
+    header = "section,state,circuit_kind,traction,required_test_points,layout"
+    (fault,) = refused(made_by_hand("A,in_use,dc,none,middle,{legs", header=header))
+    assert (fault.line, fault.column, fault.code) == (2, "layout", "not_json")
+    (fault,) = refused(made_by_hand('A,in_use,dc,none,middle,"[1,2]"', header=header))
+    assert (fault.line, fault.column) == (2, "layout")
+
+
+def test_a_new_section_has_no_version(depot: Depot) -> None:
+    header = "section,version,state,circuit_kind,traction,required_test_points"
+    with pytest.raises(NotAcceptableError) as error:
+        imported(depot, made_by_hand("A,1,in_use,dc,none,middle", header=header))
+    assert [(fault.code, fault.column) for fault in error.value.faults] == [("unknown_section", "version")]
+
+
 def test_what_the_schema_refuses_is_named_with_its_column() -> None:
     header = "section,state,circuit_kind,traction,required_test_points,equipment.circuit_kind,equipment.code"
     faults = refused(

@@ -41,6 +41,7 @@ CALIBRATION = {
 }
 ID = "0197c0de-0000-7000-8000-000000000001"
 CREATE = {"If-None-Match": "*"}
+LISTS = ("sections", "instruments", "concessions")
 
 
 @pytest.fixture
@@ -201,10 +202,11 @@ def test_a_filter_that_is_not_known_returns_nothing(client: httpx.Client) -> Non
 
 def test_what_has_not_changed_is_not_sent_again(client: httpx.Client) -> None:
     client.post(f"{AT}/sections", json=SECTION)
-    for at in ("sections", "sections/TV114", "sections/TV114/versions", "instruments", "concessions"):
+    client.put(f"{AT}/instruments/VM-3", json=INSTRUMENT, headers=CREATE)
+    for number, at in enumerate((*LISTS, "sections/TV114", "sections/TV114/versions", "instruments/VM-3")):
         tag = client.get(f"{AT}/{at}").headers["etag"]
         assert client.get(f"{AT}/{at}", headers={"If-None-Match": tag}).status_code == 304
-        client.put(f"{AT}/instruments/{at[-9:].replace('/', '.')}", json=INSTRUMENT, headers=CREATE)
+        client.put(f"{AT}/instruments/{number}", json=INSTRUMENT, headers=CREATE)
         assert client.get(f"{AT}/{at}", headers={"If-None-Match": tag}).status_code == 200
 
 
@@ -316,7 +318,9 @@ def test_concessions_are_granted_once_and_ended(api: Api, client: httpx.Client) 
     assert client.put(at, json=body, headers=CREATE).status_code == 200
     assert client.put(at, json=made.json(), headers=CREATE).status_code == 200
     assert client.put(at, json=body | {"allowed_min": 0.3}, headers=CREATE).status_code == 409
-    assert client.get(at).json() == made.json()
+    found = client.get(at)
+    assert found.json() == made.json()
+    assert client.get(at, headers={"If-None-Match": found.headers["etag"]}).status_code == 304
     assert client.get(f"{AT}/concessions").json()["items"] == [made.json()]
     ended = client.post(f"{at}/end", json={"why": "renewed"})
     assert (ended.status_code, ended.json()["ended_on"]) == (200, "2026-12-02")
@@ -335,7 +339,6 @@ WRITES = (
     ("PUT", f"concessions/{ID}", {}, CREATE),
     ("POST", f"concessions/{ID}/end", {"why": "x"}, {}),
 )
-LISTS = ("sections", "instruments", "concessions")
 READS = (*LISTS, "sections/TV114", "sections/TV114/versions", "instruments/VM-3", f"concessions/{ID}")
 
 

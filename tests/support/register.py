@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass, replace
 from datetime import UTC, date, datetime, timedelta
 from typing import Any
@@ -81,9 +81,10 @@ def kept_status(depot: Depot, section: str) -> sa.Row[Any]:
         return connection.execute(query).one()
 
 
-def in_a_book(depot: Depot) -> str:
+def in_a_book(depot: Depot, combinations: Sequence[dict[str, Any]] = ()) -> str:
     """The name of a book in force today, with one limit and one task; the clock moves on by two days."""
-    draft = limit_books.draft_of(limit_books.edition(tasks=[limit_books.task()]))
+    permitted = [combination | limit_books.SOURCE for combination in combinations]
+    draft = limit_books.draft_of(limit_books.edition(tasks=[limit_books.task()], combinations=permitted))
     with depot.service.unit_of_work(limit_books.DRAFTER) as tx:
         editions.draft(tx, draft)
     with depot.service.unit_of_work(limit_books.ISSUER) as tx:
