@@ -8,7 +8,7 @@ import sqlalchemy as sa
 from alembic import op
 
 from service.records import columns
-from service.records.journal import POSTGRES_APPEND
+from service.records.journal import POSTGRES_APPEND, SERVICE, START
 
 revision = "0001"
 down_revision = None
@@ -25,6 +25,7 @@ def upgrade() -> None:
         sa.Column("audit_weekday", sa.Integer(), nullable=False),
         sa.Column("audit_hour", sa.Integer(), nullable=False),
         sa.Column("version", sa.Integer(), nullable=False),
+        sa.Column("epoch", sa.Integer(), nullable=False),
         sa.Column("created_at", columns.UtcDateTime(), nullable=False),
         sa.CheckConstraint("audit_hour BETWEEN 0 AND 23", name=op.f("ck_depot_audit_hour_range")),
         sa.CheckConstraint("audit_weekday BETWEEN 0 AND 6", name=op.f("ck_depot_audit_weekday_range")),
@@ -472,6 +473,11 @@ def upgrade() -> None:
             ["depot", "visit"], ["visit.depot", "visit.visit"], name=op.f("fk_void_depot_visit")
         ),
         sa.PrimaryKeyConstraint("depot", "visit", name=op.f("pk_void")),
+    )
+    op.execute(
+        sa.table("journal_head", sa.column("depot"), sa.column("sequence"), sa.column("digest"))
+        .insert()
+        .values(depot=SERVICE, sequence=0, digest=START)
     )
     if op.get_bind().dialect.name == "postgresql":
         op.execute(POSTGRES_APPEND)

@@ -11,7 +11,6 @@ from collections import defaultdict
 from collections.abc import Iterable, Iterator, Mapping, Sequence
 from dataclasses import dataclass
 from datetime import date, datetime
-from functools import lru_cache
 from itertools import islice
 from typing import Any
 from zoneinfo import ZoneInfo
@@ -20,6 +19,18 @@ import sqlalchemy as sa
 from sqlalchemy.engine import Connection, Row
 
 from service.application import books, section_records
+from service.application.fact_rows import (
+    LATEST_COLUMNS,
+    READING_COLUMNS,
+    VISIT_COLUMNS,
+    WITH_VOID,
+    calibration_of,
+    concession_of,
+    reading_of,
+    returned_on,
+    version_on,
+    visit_of,
+)
 from service.records.tables import (
     CalibrationRow,
     Concession,
@@ -29,28 +40,15 @@ from service.records.tables import (
     Section,
     SectionVersion,
     VisitRow,
-    VoidRow,
 )
-from service.records.unit_of_work import end_of_day
+from service.records.unit_of_work import Transaction, end_of_day
 from service.rules import facts as rules
 from service.rules.limits import Edition
 from service.rules.quantities import QUANTITIES
-from service.rules.words import (
-    Ballast,
-    CalibrationResult,
-    Comparison,
-    ConditionLeft,
-    Rail,
-    Source,
-    Stage,
-    TaskDone,
-    Work,
-)
 
 _section = Section.__table__  # type: ignore[attr-defined]
 _version = SectionVersion.__table__  # type: ignore[attr-defined]
 _visit = VisitRow.__table__  # type: ignore[attr-defined]
-_void = VoidRow.__table__  # type: ignore[attr-defined]
 _reading = ReadingRow.__table__  # type: ignore[attr-defined]
 _latest = Latest.__table__  # type: ignore[attr-defined]
 _concession = Concession.__table__  # type: ignore[attr-defined]
@@ -85,25 +83,6 @@ class Moment:
     """True when `as_of` is the depot's today and `known_at` is None: `latest` may be used."""
 
 
-def version_on(versions: Sequence[Row[Any]], day: date) -> Row[Any] | None:
-    """The record in force on a day: the highest version that holds from then or earlier."""
-    return next((row for row in reversed(versions) if row.valid_from_on <= day), None)
-
-
-def returned_on(versions: Sequence[Row[Any]], day: date) -> date | None:
-    """The last day up to `day` on which the section came back from out of use."""
-    if all(row.state != "out_of_use" for row in versions):
-        return None
-    returned, before = None, None
-    for start in sorted({row.valid_from_on for row in versions if row.valid_from_on <= day}):
-        row = version_on(versions, start)
-        assert row is not None
-        if before == "out_of_use" and row.state == "in_use":
-            returned = start
-        before = row.state
-    return returned
-
-
 @dataclass(frozen=True, slots=True)
 class Register:
     """What does not change while visits are stored: records, editions, instruments."""
@@ -111,20 +90,46 @@ class Register:
     versions: Mapping[str, Sequence[Row[Any]]]
     editions: Mapping[str, tuple[Edition, ...]]
     instruments: Mapping[str, rules.Instrument]
+    visits: Mapping[str, Sequence[rules.Visit]] | None = None
+    """Each section's visits in order, where they are known already."""
 
     def record(self, row: Row[Any], day: date) -> rules.SectionRecord:
         """The record of a version, without its neighbours."""
         return section_records.record(row, returned_on(self.versions[row.section], day), {})
 
 
-def register(
-    connection: Connection, moment: Moment, names: Sequence[str], instruments: Sequence[str]
-) -> Register:
+def register(connection: Connection, moment: Moment, names: Sequence[str]) -> Register:
     """Records of the named sections with the editions of every book any version names."""
     versions = _versions(connection, moment, list(names)) if names else {}
-    named = {row.book for rows in versions.values() for row in rows if row.book is not None}
-    editions = books.editions_of_books(connection, sorted(named), moment.known_at)
-    return Register(versions, editions, _instruments(connection, moment, instruments))
+    return Register(versions, books.editions_of_books(connection, _books(versions), moment.known_at), {})
+
+
+def remembered(tx: Transaction, moment: Moment, epoch: int, names: Sequence[str]) -> Register:
+    """As `register`, with all the depot's instruments; editions and instruments from memory if they are
+    of this epoch of the depot, whose row must be locked as shared."""
+    versions = _versions(tx.connection, moment, list(names)) if names else {}
+    kept = tx.memory.get(moment.depot)
+    if kept is None or kept.epoch != epoch:
+        kept = _Kept(epoch, {}, _instruments(tx.connection, moment, None))
+    unread = _books(versions) - kept.editions.keys()
+    if unread:
+        more = books.editions_of_books(tx.connection, unread, None)
+        kept = _Kept(epoch, {**kept.editions, **more}, kept.instruments)
+    tx.memory[moment.depot] = kept
+    return Register(versions, kept.editions, kept.instruments)
+
+
+@dataclass(frozen=True, slots=True)
+class _Kept:
+    """What is remembered of a depot: true for one epoch, since changes to it take the exclusive lock."""
+
+    epoch: int
+    editions: Mapping[str, tuple[Edition, ...]]
+    instruments: Mapping[str, rules.Instrument]
+
+
+def _books(versions: Mapping[str, Sequence[Row[Any]]]) -> set[str]:
+    return {row.book for rows in versions.values() for row in rows if row.book is not None}
 
 
 def gather(
@@ -154,10 +159,10 @@ def _gather_chunk(
     known: Register | None,
 ) -> Iterator[Gathered]:
     if known is None:
-        known = register(connection, moment, names, ())
+        known = register(connection, moment, names)
     versions, editions = known.versions, known.editions
     in_force = {name: version_on(versions.get(name, ()), moment.as_of) for name in names}
-    visits = _visits(connection, moment, names)
+    visits = known.visits if known.visits is not None else _visits(connection, moment, names)
     readings = _readings(connection, moment, names, editions)
     concessions = _concessions(connection, moment, names)
     if instruments is None:
@@ -238,87 +243,22 @@ def _polarities(
     return said
 
 
-@lru_cache(maxsize=4096)
-def _tasks(text: str) -> tuple[rules.TaskClaim, ...]:
-    return tuple(rules.TaskClaim(item["task"], TaskDone(item["done"])) for item in json.loads(text))
-
-
-@lru_cache(maxsize=4096)
-def _work(text: str) -> frozenset[Work]:
-    return frozenset(Work(word) for word in json.loads(text))
-
-
-def visit_of(
-    row: Mapping[str, Any] | Row[*tuple[Any, ...]], time_zone: ZoneInfo, voided: bool
-) -> rules.Visit:
-    """The rule object of a row of `visit`."""
-    values = row if isinstance(row, Mapping) else row._mapping
-    return rules.Visit(
-        visit=values["visit"],
-        visited_at=values["visited_at"],
-        visited_on=values["visited_at"].astimezone(time_zone).date(),
-        ballast=Ballast(values["ballast"]) if values["ballast"] else None,
-        rail=Rail(values["rail"]) if values["rail"] else None,
-        tasks=_tasks(values["tasks"]),
-        work=_work(values["work_done"]),
-        condition_left=ConditionLeft(values["condition_left"]) if values["condition_left"] else None,
-        replaces=values["replaces"],
-        voided=voided,
-    )
-
-
-_VISIT_COLUMNS = [
-    _visit.c[name]
-    for name in (
-        "section",
-        "visit",
-        "visited_at",
-        "ballast",
-        "rail",
-        "tasks",
-        "work_done",
-        "condition_left",
-        "replaces",
-    )
-]
-
-
 def _visits(connection: Connection, moment: Moment, names: list[str]) -> dict[str, list[rules.Visit]]:
-    joined = _visit.outerjoin(
-        _void, sa.and_(_void.c.depot == _visit.c.depot, _void.c.visit == _visit.c.visit)
-    )
     query = (
-        sa.select(*_VISIT_COLUMNS, _void.c.voided_at)
-        .select_from(joined)
+        sa.select(*VISIT_COLUMNS)
+        .select_from(WITH_VOID)
         .where(_in_chunk(_visit, moment.depot, names))
         .where(_visit.c.visited_at < end_of_day(moment.as_of, moment.time_zone))
         .order_by(_visit.c.section, _visit.c.visited_at, _visit.c.visit)
     )
     if moment.known_at is not None:
         query = query.where(_visit.c.received_at <= moment.known_at)
-    zone = ZoneInfo(moment.time_zone)
+    zone, known_at = ZoneInfo(moment.time_zone), moment.known_at
     found: dict[str, list[rules.Visit]] = defaultdict(list)
-    for row in connection.execute(query):
-        voided = row.voided_at is not None and (moment.known_at is None or row.voided_at <= moment.known_at)
-        found[row.section].append(visit_of(row, zone, voided))
+    for section, *columns, voided_at in connection.execute(query):
+        voided = voided_at is not None and (known_at is None or voided_at <= known_at)
+        found[section].append(visit_of(zone, *columns, voided=voided))
     return found
-
-
-def reading_of(row: Mapping[str, Any] | Row[Any], stage: str, value: float) -> rules.Reading:
-    """The rule object of a row of `reading` or of `latest`."""
-    values = row if isinstance(row, Mapping) else row._mapping
-    return rules.Reading(
-        visit=values["visit"],
-        quantity=values["quantity"],
-        test_point=values["test_point"],
-        stage=Stage(stage),
-        comparison=Comparison(values["comparison"]),
-        value=value,
-        instrument=values["instrument"],
-        shunt_ohm=values["shunt_ohm"],
-        source=Source(values["source"]) if values["source"] else None,
-        doubtful=values["doubtful"],
-    )
 
 
 def _historic(editions: Iterable[Edition]) -> list[str]:
@@ -337,46 +277,40 @@ def _readings(
     editions: Mapping[str, tuple[Edition, ...]],
 ) -> dict[str, list[rules.Reading]]:
     ends = end_of_day(moment.as_of, moment.time_zone)
-    query = sa.select(_reading).where(_in_chunk(_reading, moment.depot, names), _reading.c.visited_at < ends)
-    found: dict[str, list[rules.Reading]] = defaultdict(list)
+    every = sa.select(*READING_COLUMNS).where(
+        _in_chunk(_reading, moment.depot, names), _reading.c.visited_at < ends
+    )
     if moment.present:
         historic = _historic(edition for several in editions.values() for edition in several)
-        ahead = _latest_rows(connection, moment, names, frozenset(historic), ends, found)
+        newest = sa.select(*LATEST_COLUMNS).where(
+            _in_chunk(_latest, moment.depot, names), _latest.c.quantity.not_in(historic)
+        )
+        both = sa.union_all(newest, every.where(_reading.c.quantity.in_(historic)))
+        found, ahead = _sorted_out(connection, both, ends)
         if not ahead:
-            query = query.where(_reading.c.quantity.in_(historic))
-        # a handheld ahead of midnight has the last word in `latest`: fall back on all readings
-        else:
-            found.clear()
+            return found
+        # a handheld ahead of midnight has the last word in `latest`: go by all readings
     elif moment.known_at is not None:
-        query = query.where(
+        every = every.where(
             sa.exists().where(
                 _visit.c.depot == _reading.c.depot,
                 _visit.c.visit == _reading.c.visit,
                 _visit.c.received_at <= moment.known_at,
             )
         )
-    for row in connection.execute(query):
-        found[row.section].append(reading_of(row, row.stage, row.value))
-    return found
+    return _sorted_out(connection, every, ends)[0]
 
 
-def _latest_rows(
-    connection: Connection,
-    moment: Moment,
-    names: list[str],
-    historic: frozenset[str],
-    ends: datetime,
-    found: dict[str, list[rules.Reading]],
-) -> bool:
-    """Add the latest readings to `found`; True if one of them was taken after the day judged."""
-    query = sa.select(_latest).where(_in_chunk(_latest, moment.depot, names))
-    for row in connection.execute(query):
-        if row.visited_at >= ends:
-            return True
-        if row.quantity not in historic:
-            stage, value = ("as_left", row.as_left) if row.as_left is not None else ("as_found", row.as_found)
-            found[row.section].append(reading_of(row, stage, value))
-    return False
+def _sorted_out(
+    connection: Connection, query: sa.Select[Any] | sa.CompoundSelect[Any], ends: datetime
+) -> tuple[dict[str, list[rules.Reading]], bool]:
+    """Readings by section, and whether one of them was taken after the day judged."""
+    found: dict[str, list[rules.Reading]] = defaultdict(list)
+    ahead = False
+    for section, visited_at, *columns in connection.execute(query):
+        ahead = ahead or visited_at >= ends
+        found[section].append(reading_of(*columns))
+    return found, ahead
 
 
 def _concessions(
@@ -387,20 +321,7 @@ def _concessions(
         query = query.where(_concession.c.granted_at <= moment.known_at)
     found: dict[str, list[rules.Concession]] = defaultdict(list)
     for row in connection.execute(query.order_by(_concession.c.concession)):
-        known = row.ended_at is not None and (moment.known_at is None or row.ended_at <= moment.known_at)
-        found[row.section].append(
-            rules.Concession(
-                concession=row.concession,
-                limit=row.limit_name,
-                task=row.task,
-                test_point=row.test_point,
-                allowed_min=row.allowed_min,
-                allowed_max=row.allowed_max,
-                from_on=row.from_on,
-                until_on=row.until_on,
-                ended_on=row.ended_on if known else None,
-            )
-        )
+        found[row.section].append(concession_of(row, moment.known_at))
     return found
 
 
@@ -431,9 +352,3 @@ def _instruments(
             continue
         known.append(calibration_of(row))
     return {name: rules.Instrument(name, tuple(found)) for name, found in calibrations.items()}
-
-
-def calibration_of(row: Row[Any]) -> rules.Calibration:
-    """The rule object of a row of `calibration`; its resolution is kept in the base unit."""
-    step = {} if row.resolution is None else {row.resolution_unit: row.resolution}
-    return rules.Calibration(row.calibrated_on, row.due_on, CalibrationResult(row.result), step)

@@ -131,7 +131,7 @@ def _last_cleared(connection: Connection, depot: str, identities: list[str]) -> 
 
 def wire(row: Row[Any] | Mapping[str, Any], as_of: date) -> dict[str, Any]:
     """A finding as answers, lists and the journal show it, on a day."""
-    values = row if isinstance(row, Mapping) else row._mapping
+    values: Mapping[str, Any] = row if isinstance(row, Mapping) else row._asdict()
     until = values["cleared_on"] or as_of
     response = None if values["response"] is None else json.loads(values["response"])
     return {

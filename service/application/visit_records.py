@@ -14,7 +14,8 @@ from zoneinfo import ZoneInfo
 import sqlalchemy as sa
 from sqlalchemy.engine import Connection, Row
 
-from service.application import facts, visit_content
+from service.application import visit_content
+from service.application.fact_rows import VISIT_COLUMNS, WITH_VOID, visit_of
 from service.application.visit_content import Draft, ReadingDraft, TaskDraft
 from service.errors import NotFoundError
 from service.records import latest
@@ -27,9 +28,6 @@ _void = VoidRow.__table__  # type: ignore[attr-defined]
 _reading = ReadingRow.__table__  # type: ignore[attr-defined]
 _section = Section.__table__  # type: ignore[attr-defined]
 
-WITH_VOID = _visit.outerjoin(_void, sa.and_(_void.c.depot == _visit.c.depot, _void.c.visit == _visit.c.visit))
-"""Every visit with its void, if it has one."""
-
 
 def require_section(connection: Connection, depot: str, section: str) -> None:
     """NotFoundError if the depot has no such section."""
@@ -41,13 +39,16 @@ def require_section(connection: Connection, depot: str, section: str) -> None:
 def derive_latest(connection: Connection, depot: str, section: str) -> None:
     """Derive `latest` of a section again, after a void or a replacement."""
     query = (
-        sa.select(_visit, _void.c.voided_at)
+        sa.select(*VISIT_COLUMNS)
         .select_from(WITH_VOID)
         .where(_visit.c.depot == depot, _visit.c.section == section)
         .order_by(_visit.c.visited_at, _visit.c.visit)
     )
     utc = ZoneInfo("UTC")
-    found = [facts.visit_of(row, utc, row.voided_at is not None) for row in connection.execute(query)]
+    found = [
+        visit_of(utc, *columns, voided=voided_at is not None)
+        for _, *columns, voided_at in connection.execute(query)
+    ]
     latest.derive(connection, depot, section, [visit.visit for visit in readings.counting(found)])
 
 

@@ -7,6 +7,7 @@ One visit is a batch of one. What a visit says by itself is in `visit_content`, 
 from __future__ import annotations
 
 import json
+from collections import defaultdict
 from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass, field, replace
 from datetime import datetime
@@ -17,6 +18,7 @@ import sqlalchemy as sa
 from sqlalchemy.engine import Connection, Row
 
 from service.application import facts, findings, section_records, status, visit_content, visit_records
+from service.application.fact_rows import VISIT_COLUMNS, WITH_VOID, reading_of, version_on, visit_of
 from service.application.visit_content import Draft
 from service.errors import (
     ConflictError,
@@ -59,7 +61,7 @@ class Caution:
 class Outcome:
     """What became of one posted visit. `status` is the section's after all of the batch."""
 
-    visit: str
+    visit: str | None
     section: str | None
     outcome: str
     received_at: datetime | None = None
@@ -91,8 +93,7 @@ def post(tx: Transaction, depot: str, drafts: Sequence[Draft], clock_offset_s: i
     row = tx.lock_depot(depot)
     sections = tx.lock_sections(depot, [draft.section for draft in drafts])
     moment = status.present(row, tx.now)
-    used = {reading.instrument for draft in drafts for reading in draft.readings if reading.instrument}
-    register = facts.register(tx.connection, moment, sorted(sections), sorted(used))
+    register = facts.remembered(tx, moment, row.epoch, sorted(sections))
     known = _known(tx.connection, depot, drafts)
     outcomes: list[Outcome] = []
     accepted: dict[str, _Accepted] = {}
@@ -100,32 +101,47 @@ def post(tx: Transaction, depot: str, drafts: Sequence[Draft], clock_offset_s: i
         outcome = _decide(tx, draft, known, accepted, register, row.time_zone, clock_offset_s)
         outcomes.append(outcome)
     _store(tx, depot, list(accepted.values()), known, clock_offset_s)
+    register = replace(register, visits=_visits_now(moment, known, accepted))
     judged, sequence = _judge(tx, row, register, outcomes, list(accepted.values()), clock_offset_s)
     return [_finished(outcome, judged, sequence, accepted) for outcome in outcomes]
 
 
 @dataclass(frozen=True, slots=True)
 class _Known:
-    """A visit already stored."""
+    """A visit already stored. `columns` are those of `fact_rows.VISIT_COLUMNS`."""
 
+    columns: tuple[Any, ...]
     section: str
+    replaces: str | None
     digest: str
     received_at: datetime
-    replaces: str | None
     holder: str
     found_outside: bool
     clock_offset_s: int | None
 
 
+_KNOWN = tuple(_visit.c[name] for name in list(_Known.__dataclass_fields__)[1:])
+
+
 def _known(connection: Connection, depot: str, drafts: Sequence[Draft]) -> dict[str, _Known]:
-    """Stored visits that the drafts repeat, replace or are replaced by."""
-    ids = {draft.visit for draft in drafts}
-    named = sorted(ids | {draft.replaces for draft in drafts if draft.replaces is not None})
-    columns = [_visit.c[name] for name in ("visit", *_Known.__dataclass_fields__)]
-    query = sa.select(*columns).where(
-        _visit.c.depot == depot, sa.or_(_visit.c.visit.in_(named), _visit.c.replaces.in_(sorted(ids)))
+    """Every stored visit of the drafts' sections, and those that the drafts repeat, replace or are
+    replaced by."""
+    ids = sorted({draft.visit for draft in drafts})
+    named = sorted({*ids, *(draft.replaces for draft in drafts if draft.replaces is not None)})
+    query = (
+        sa.select(*VISIT_COLUMNS, *_KNOWN)
+        .select_from(WITH_VOID)
+        .where(
+            _visit.c.depot == depot,
+            sa.or_(
+                _visit.c.section.in_(sorted({draft.section for draft in drafts})),
+                _visit.c.visit.in_(named),
+                _visit.c.replaces.in_(ids),
+            ),
+        )
     )
-    return {row.visit: _Known(*row[1:]) for row in connection.execute(query)}
+    width = len(VISIT_COLUMNS)
+    return {row[1]: _Known(tuple(row[:width]), *row[width:]) for row in connection.execute(query)}
 
 
 def _decide(
@@ -180,7 +196,7 @@ def _refusal(
         faults.append(Fault("unknown_section", "this depot has no such section", "/section"))
     else:
         day = draft.visited_at.astimezone(ZoneInfo(time_zone)).date()
-        record = facts.version_on(versions, day) or versions[0]
+        record = version_on(versions, day) or versions[0]
         if record.state == SectionState.RECOVERED:
             faults.append(Fault("recovered_section", "the section had been recovered by then", "/section"))
     if draft.replaces is not None and draft.replaces != draft.visit:
@@ -233,9 +249,9 @@ def _replaces_faults(
 
 def _accept(draft: Draft, digest: str, register: facts.Register, time_zone: str) -> _Accepted:
     """Convert, look for what cannot be, and judge by the limits in force on the visit's day."""
-    rule = facts.visit_of(_judged_columns(draft), ZoneInfo(time_zone), voided=False)
+    rule = visit_of(ZoneInfo(time_zone), **_judged_columns(draft), voided=False)
     versions = register.versions[draft.section]
-    row = facts.version_on(versions, rule.visited_on) or versions[0]
+    row = version_on(versions, rule.visited_on) or versions[0]
     record = register.record(row, rule.visited_on)
     converted: list[dict[str, Any]] = [
         {
@@ -243,8 +259,8 @@ def _accept(draft: Draft, digest: str, register: facts.Register, time_zone: str)
             "quantity": reading.quantity,
             "test_point": reading.test_point,
             "stage": reading.stage,
-            "comparison": reading.comparison,
             "value": to_base(reading.value, reading.unit),
+            "comparison": reading.comparison,
             "instrument": reading.instrument,
             "shunt_ohm": reading.shunt_ohm,
             "source": reading.source,
@@ -252,13 +268,13 @@ def _accept(draft: Draft, digest: str, register: facts.Register, time_zone: str)
         }
         for reading in draft.readings
     ]
-    plain = [facts.reading_of(values, values["stage"], values["value"]) for values in converted]
+    plain = [reading_of(**values) for values in converted]
     cautions = []
     hints = doubtful.EquipmentHints(record.circuit_kind, section_records.feed_emf_v(row))
-    for index, doubt in doubtful.doubts(hints, plain).items():
-        converted[index]["doubtful"] = doubt.code
-        plain[index] = replace(plain[index], doubtful=doubt.code)
-        cautions.append(Caution(doubt.code, doubt.reason, f"/readings/{index}"))
+    for index, code in doubtful.doubts(hints, plain).items():
+        converted[index]["doubtful"] = code
+        plain[index] = replace(plain[index], doubtful=code)
+        cautions.append(Caution(code, doubtful.WORDS[code], f"/readings/{index}"))
     edition = in_force(register.editions.get(row.book or "", ()), rule.visited_on)
     outside: Sequence[Verdict] = ()
     if edition is not None:
@@ -319,12 +335,15 @@ def _store(
                     "unit_given": given.unit,
                 }
             )
-    bulk.insert(tx.connection, _visit, visit_rows)
-    bulk.insert(tx.connection, _reading, reading_rows)
     replacing = {item.draft.section for item in accepted if item.draft.replaces is not None}
     replaced = {visit.replaces for visit in known.values() if visit.replaces is not None}
     replacing |= {item.draft.section for item in accepted if item.draft.visit in replaced}
-    latest.advance(tx.connection, [row for row in reading_rows if row["section"] not in replacing])
+    bulk.insert_all(
+        tx.connection,
+        bulk.Rows(_visit, visit_rows),
+        bulk.Rows(_reading, reading_rows),
+        latest.advanced([row for row in reading_rows if row["section"] not in replacing]),
+    )
     for section in sorted(replacing):
         visit_records.derive_latest(tx.connection, depot, section)
 
@@ -337,6 +356,26 @@ def rebuild_latest(tx: Transaction, depot: str) -> int:
     for section in sections:
         visit_records.derive_latest(tx.connection, depot, section)
     return len(sections)
+
+
+def _visits_now(
+    moment: facts.Moment, known: Mapping[str, _Known], accepted: Mapping[str, _Accepted]
+) -> dict[str, list[rules.Visit]]:
+    """Each section's visits with those just stored, oldest first, without what is ahead of midnight."""
+    zone = ZoneInfo(moment.time_zone)
+    found: dict[str, list[rules.Visit]] = defaultdict(list)
+    for stored in known.values():
+        *columns, voided_at = stored.columns[1:]
+        found[stored.section].append(visit_of(zone, *columns, voided=voided_at is not None))
+    for item in accepted.values():
+        found[item.draft.section].append(item.rule)
+    return {
+        section: sorted(
+            (visit for visit in several if visit.visited_on <= moment.as_of),
+            key=lambda visit: (visit.visited_at, visit.visit),
+        )
+        for section, several in found.items()
+    }
 
 
 def _judge(
@@ -387,7 +426,7 @@ def _finished(
     if outcome.outcome == "refused" or outcome.section is None or outcome.section not in judged:
         return outcome
     found, verdict = judged[outcome.section]
-    item = accepted.get(outcome.visit) if outcome.outcome == "stored" else None
+    item = accepted.get(outcome.visit or "") if outcome.outcome == "stored" else None
     cautions = tuple(_cautions(item, found, verdict, outcome)) if item is not None else ()
     return replace(outcome, status=verdict, sequence=sequence, cautions=cautions)
 
@@ -409,8 +448,8 @@ def _cautions(
             "clock_offset", f"The device's clock differs by {outcome.clock_offset_s} s from the server's."
         )
     yield from item.cautions
-    for index, reading in enumerate(item.draft.readings):
-        rule = facts.reading_of(item.rows[index], reading.stage, item.rows[index]["value"])
+    for index, values in enumerate(item.rows):
+        rule = reading_of(**values)
         doubt = readings.trust(rule, item.rule.visited_on, found.instruments, verdict.as_of)
         if doubt is not None and rule.doubtful is None:
             yield Caution(doubt.code, doubt.reason, f"/readings/{index}/instrument")

@@ -1,4 +1,4 @@
-"""Insert many rows by one statement.
+"""Insert many rows, into one table or several, by one statement.
 
 PostgreSQL takes one `INSERT … SELECT unnest(arrays)`, several times faster than a row at a time;
 SQLite, without a network in between, an executemany.
@@ -7,6 +7,7 @@ SQLite, without a network in between, an executemany.
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
 from functools import lru_cache
 from typing import Any
 
@@ -15,18 +16,39 @@ from sqlalchemy.dialects import postgresql
 from sqlalchemy.engine import Connection
 
 
+@dataclass(frozen=True, slots=True)
+class Rows:
+    """Rows for one table, all with the same columns; `conflict` is an ON CONFLICT clause."""
+
+    table: sa.Table
+    rows: Sequence[Mapping[str, Any]]
+    conflict: str = ""
+
+    @property
+    def columns(self) -> tuple[str, ...]:
+        """The columns that the rows have."""
+        return tuple(self.rows[0])
+
+
+Shape = tuple[tuple[sa.Table, tuple[str, ...], str], ...]
+
+
 @lru_cache(maxsize=64)
-def _unnest(table: sa.Table, columns: tuple[str, ...], conflict: str) -> sa.TextClause:
+def _unnest(shape: Shape) -> sa.TextClause:
+    *first, last = (_one_unnest(place, *each) for place, each in enumerate(shape))
+    leading = ", ".join(f"i{place} AS ({text})" for place, text in enumerate(first))
+    return sa.text(f"WITH {leading} {last}" if first else last)
+
+
+def _one_unnest(place: int, table: sa.Table, columns: tuple[str, ...], conflict: str) -> str:
     dialect = postgresql.dialect()  # type: ignore[no-untyped-call]
     arrays = []
     for name in columns:
         bare = table.c[name].type.compile(dialect=dialect).partition(" COLLATE")[0]
-        arrays.append(f"CAST(:{name} AS {bare}[])")
+        arrays.append(f"CAST(:{name}_{place} AS {bare}[])")
     names = ", ".join(columns)
     # names of our own tables only; every value is bound
-    return sa.text(
-        f"INSERT INTO {table.name} ({names}) SELECT * FROM unnest({', '.join(arrays)}) {conflict}"  # noqa: S608
-    )
+    return f"INSERT INTO {table.name} ({names}) SELECT * FROM unnest({', '.join(arrays)}) {conflict}"  # noqa: S608
 
 
 @lru_cache(maxsize=64)
@@ -40,15 +62,27 @@ def _values(table: sa.Table, columns: tuple[str, ...], conflict: str) -> sa.Text
 def insert(
     connection: Connection, table: sa.Table, rows: Sequence[Mapping[str, Any]], conflict: str = ""
 ) -> None:
-    """Insert `rows`, all with the same columns; `conflict` is an ON CONFLICT clause.
+    """Insert `rows`, all with the same columns; `conflict` is an ON CONFLICT clause."""
+    insert_all(connection, Rows(table, rows, conflict))
 
-    With no rows nothing is sent: an empty array would have no type.
+
+def insert_all(connection: Connection, *several: Rows) -> None:
+    """Insert into several tables, in order; on PostgreSQL by one statement.
+
+    What has no rows is left out (an empty array would have no type); with none at all nothing is sent.
     """
-    if not rows:
+    filled = [each for each in several if each.rows]
+    if not filled:
         return
-    columns = tuple(rows[0])
     if connection.dialect.name == "postgresql":
-        arrays = {name: [row[name] for row in rows] for name in columns}
-        connection.execute(_unnest(table, columns, conflict), arrays)
-    else:
-        connection.execute(_values(table, columns, conflict), [dict(row) for row in rows])
+        shape = tuple((each.table, each.columns, each.conflict) for each in filled)
+        arrays = {
+            f"{name}_{place}": [row[name] for row in each.rows]
+            for place, each in enumerate(filled)
+            for name in each.columns
+        }
+        connection.execute(_unnest(shape), arrays)
+        return
+    for each in filled:
+        statement = _values(each.table, each.columns, each.conflict)
+        connection.execute(statement, [dict(row) for row in each.rows])

@@ -158,6 +158,7 @@ class Database:
         self.url = url
         self.engine = make_engine(url, pool_size)
         self.is_sqlite = self.engine.dialect.name == "sqlite"
+        self.memory: dict[str, Any] = {}
         self._write_lock = threading.Lock()
 
     @contextmanager

@@ -40,9 +40,44 @@ class Entry:
     content: Any
 
 
+_encode = json.JSONEncoder(
+    ensure_ascii=False, check_circular=False, allow_nan=False, sort_keys=True, separators=(",", ":")
+).encode
+
+
 def canonical(value: Any) -> str:
-    """RFC 8785 text of a JSON value."""
-    return rfc8785.dumps(value).decode()
+    """RFC 8785 text of a JSON value.
+
+    The standard encoder writes the same text, several times faster, once whole floats are made
+    integers; a number it would write otherwise (with an exponent) is left to the library.
+    """
+    try:
+        return _encode(_plain(value))
+    except _ExoticError:
+        return rfc8785.dumps(value).decode()
+
+
+class _ExoticError(Exception):
+    """Something that the standard encoder writes otherwise than RFC 8785."""
+
+
+def _plain(value: Any) -> Any:
+    if isinstance(value, dict):
+        return {key: _plain(member) for key, member in value.items()}
+    if isinstance(value, list):
+        return [_plain(member) for member in value]
+    if isinstance(value, float):
+        if value.is_integer() and abs(value) < 2**53:
+            return int(value)
+        if not 1e-4 <= abs(value) < 1e16:
+            raise _ExoticError
+    elif isinstance(value, str):
+        if not value.isascii() and any(0xD800 <= ord(sign) <= 0xDFFF for sign in value):
+            raise _ExoticError
+        return str(value)
+    elif isinstance(value, int) and abs(value) >= 2**53:
+        raise _ExoticError
+    return value
 
 
 def instant_text(instant: datetime) -> str:

@@ -54,9 +54,9 @@ def fold(readings: Iterable[Mapping[str, Any]]) -> list[dict[str, Any]]:
     return list(newest.values())
 
 
-def advance(connection: Connection, readings: Sequence[Mapping[str, Any]]) -> None:
-    """Upsert with newly stored readings; whichever visit is newer by (visited_at, visit) stays."""
-    bulk.insert(connection, _latest, fold(readings), _UPSERT)
+def advanced(readings: Sequence[Mapping[str, Any]]) -> bulk.Rows:
+    """The upsert for newly stored readings; whichever visit is newer by (visited_at, visit) stays."""
+    return bulk.Rows(_latest, fold(readings), _UPSERT)
 
 
 def derive(connection: Connection, depot: str, section: str, counting: Sequence[str]) -> None:

@@ -45,11 +45,17 @@ class Transaction:
     actor: Actor
     now: datetime
     new_id: Callable[[], str]
+    memory: dict[str, Any]
+    """The database's: depot → what is kept of it for one epoch."""
 
     def lock_depot(self, depot: str, *, exclusive: bool = False) -> Row[Any]:
         """Lock a depot, shared for what touches one section, exclusive for what can move many."""
-        query = sa.select(_depot).where(_depot.c.depot == depot)
-        row = self.connection.execute(query.with_for_update(read=not exclusive)).one_or_none()
+        if exclusive:
+            moved = sa.update(_depot).where(_depot.c.depot == depot).values(epoch=_depot.c.epoch + 1)
+            row = self.connection.execute(moved.returning(_depot)).one_or_none()
+        else:
+            query = sa.select(_depot).where(_depot.c.depot == depot).with_for_update(read=True)
+            row = self.connection.execute(query).one_or_none()
         if row is None:
             raise NotFoundError("There is no such depot.")
         return row
@@ -88,4 +94,4 @@ def unit_of_work(
 ) -> Iterator[Transaction]:
     """Acquire, work, commit in one thread; anything raised rolls all of it back."""
     with database.write() as connection:
-        yield Transaction(connection, actor, now, new_id)
+        yield Transaction(connection, actor, now, new_id, database.memory)

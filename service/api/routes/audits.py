@@ -118,12 +118,6 @@ def get_weekly_list(
         return file(weekly_xlsx.write(found), FORMATS["xlsx"], f"{stem}.xlsx", fresh.headers)
     if name == "html":
         page = weekly_html.write(found)
-        return Response(page, headers=fresh.headers, media_type="text/html; charset=utf-8")
-    shown = WeeklyListAnswer(
-        depot=found.depot,
-        title=found.title,
-        time_zone=found.time_zone,
-        audit=AuditAnswer.model_validate(found.audit),
-        sections=found.sections,
-    )
-    return answer(shown, fresh.headers)
+        policy = {"Content-Security-Policy": weekly_html.CONTENT_SECURITY_POLICY}
+        return Response(page, headers=fresh.headers | policy, media_type="text/html; charset=utf-8")
+    return answer(WeeklyListAnswer.model_validate(found), fresh.headers)

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from datetime import date
-from typing import Literal
+from typing import Any, Literal
 
 from pydantic import ConfigDict, Field
 
@@ -11,7 +11,7 @@ from service.api.schemas.base import Answer, Instant, Line, Remarks, Request
 from service.api.schemas.status import VERDICT, TaskAnswer, VerdictAnswer
 from service.rules.words import FindingKind, FindingState, Hazard
 
-AUDIT = {
+AUDIT: dict[str, Any] = {
     "depot": "harrow-vale",
     "audit": "2026-11-30",
     "state": "finished",
@@ -33,7 +33,7 @@ AUDIT = {
     "counts": {"compliance_yes": 170, "compliance_not_shown": 41, "compliance_no": 25, "overdue": 17},
     "caution": "Advice from records, not an authority to work or to run trains.",
 }
-RESPONSE = {
+RESPONSE: dict[str, Any] = {
     "owner": "M. Quill",
     "action": "Feed turned down, ballast to be cleaned",
     "planned_on": "2026-12-04",
@@ -44,7 +44,7 @@ RESPONSE = {
     "cause": "Feed turned up in the wet",
     "restored_by": "T114",
 }
-FINDING = {
+FINDING: dict[str, Any] = {
     "depot": "harrow-vale",
     "finding": "0197c0de-7b1a-7c3d-9e4f-5a6b7c8d9e0f",
     "section": "TV114",
@@ -165,7 +165,7 @@ class FindingAnswer(Answer):
     version: int
 
 
-LISTED = {
+LISTED: dict[str, Any] = {
     "section": "TV114",
     "title": "Up Main, Tarn Viaduct",
     "line_name": "Harrow Vale main line",
@@ -232,5 +232,3 @@ class WeeklyListAnswer(Answer):
     time_zone: str
     audit: AuditAnswer
     sections: list[ListedSection]
-
-

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from typing import Any
+
 from pydantic import ConfigDict
 
 from service.api.schemas.base import Answer, Instant
@@ -15,8 +17,11 @@ from service.rules.words import (
     VerdictWord,
 )
 
-REASON = {"code": "undecided", "reason": "the reading does not tell on which side of the limit it lies"}
-VERDICT = {
+REASON: dict[str, Any] = {
+    "code": "undecided",
+    "reason": "the reading does not tell on which side of the limit it lies",
+}
+VERDICT: dict[str, Any] = {
     "limit": "drop-shunt",
     "quantity": "drop_shunt",
     "test_point": "relay_end",
@@ -43,7 +48,7 @@ VERDICT = {
     "doubtful": None,
     "reasons": [],
 }
-SUMMARY = {
+SUMMARY: dict[str, Any] = {
     "compliance": "yes",
     "overdue": False,
     "worst_hazard": None,
@@ -51,7 +56,7 @@ SUMMARY = {
     "holds_until": "2027-02-27",
     "sequence": 4711,
 }
-TASK = {
+TASK: dict[str, Any] = {
     "task": "shunt_test",
     "state": "current",
     "interval": "P3M",
@@ -64,7 +69,7 @@ TASK = {
     "concession": None,
     "reasons": [],
 }
-STATUS = {
+STATUS: dict[str, Any] = {
     "depot": "harrow-vale",
     "section": "TV114",
     "section_version": 3,

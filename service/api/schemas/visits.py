@@ -27,7 +27,7 @@ VisitId = Annotated[str, StringConstraints(pattern=r"^[0-9a-f]{8}(-[0-9a-f]{4}){
 Word = Annotated[str, StringConstraints(pattern=r"^[a-z][a-z0-9_]{0,59}$")]
 Short = Annotated[str, StringConstraints(min_length=1, max_length=60)]
 
-VISIT = {
+VISIT: dict[str, Any] = {
     "visit": "0197c0de-7b1a-7c3d-9e4f-5a6b7c8d9e0f",
     "section": "TV114",
     "visited_at": "2026-11-30T09:12:00Z",
@@ -158,12 +158,12 @@ class CautionAnswer(Answer):
     reason: str
 
 
-PROTECT = {
+PROTECT: dict[str, Any] = {
     "code": "protect_and_report",
     "pointer": None,
     "reason": "Outside a wrong-side limit: protect and report under your rules before adjusting.",
 }
-OUTCOME = {
+OUTCOME: dict[str, Any] = {
     "visit": VISIT["visit"],
     "section": "TV114",
     "outcome": "stored",
@@ -243,11 +243,10 @@ class VoidedAnswer(Answer):
     why: str
 
 
-STORED = {
+STORED: dict[str, Any] = {
     **VISIT,
     "readings": [
-        {"comparison": "eq", "shunt_ohm": None, "source": None, **reading}  # type: ignore[dict-item]
-        for reading in VISIT["readings"]  # type: ignore[attr-defined]
+        {"comparison": "eq", "shunt_ohm": None, "source": None, **reading} for reading in VISIT["readings"]
     ],
     "received_at": "2026-11-30T09:14:10.000000Z",
     "clock_offset_s": -1,

@@ -25,6 +25,8 @@ class Depot(SQLModel, table=True):
     audit_weekday: int
     audit_hour: int
     version: int
+    epoch: int
+    """Counts the changes that can move many sections: what is kept in memory of them is good for one."""
     created_at: datetime = instant()
 
 

@@ -1,0 +1,166 @@
+"""Print the service's figures against floors measured in the same run: `python tests/bench/run.py p1 p2 …`.
+
+Without names, all of them. Ratios are what counts; the machine's own speed cancels out.
+"""
+
+from __future__ import annotations
+
+import argparse
+import json
+import subprocess
+import sys
+import time
+from collections.abc import Iterator
+from contextlib import contextmanager
+from datetime import timedelta
+from pathlib import Path
+from typing import Any
+
+HERE = Path(__file__).parent
+sys.path[:0] = [str(HERE), str(HERE.parent)]
+
+import psycopg  # noqa: E402
+import world as worlds  # noqa: E402
+from support import postgres  # noqa: E402
+
+CLIENTS = 16
+WARM_UP = 100
+SLOW_COMMIT = """
+CREATE FUNCTION slow_commit() RETURNS trigger LANGUAGE plpgsql AS $$ BEGIN PERFORM pg_sleep(0.005); RETURN NULL; END $$;
+CREATE CONSTRAINT TRIGGER slow_commit AFTER INSERT ON journal DEFERRABLE INITIALLY DEFERRED
+FOR EACH ROW EXECUTE FUNCTION slow_commit();
+"""
+"""Stands for a disk that takes 5 ms: the sleep is in COMMIT, with every lock still held."""
+
+
+def say(name: str, text: str) -> None:
+    """One line of the report."""
+    print(f"{name}  {text}", flush=True)
+
+
+def plain(url: str) -> str:
+    """The URL as psycopg takes it."""
+    return url.replace("postgresql+psycopg", "postgresql")
+
+
+@contextmanager
+def served(module: str, url: str) -> Iterator[str]:
+    """A server process of `serving.py` on a free port."""
+    process = subprocess.Popen(
+        [sys.executable, HERE / "serving.py", module, url], stdout=subprocess.PIPE, text=True
+    )
+    try:
+        assert process.stdout is not None
+        yield process.stdout.readline().strip()
+    finally:
+        process.terminate()
+        process.wait()
+
+
+def load(base: str, requests: list[dict[str, Any]]) -> dict[str, float]:
+    """What the clients of `load.py` measured."""
+    lines = "\n".join(json.dumps(one) for one in requests)
+    done = subprocess.run(
+        [sys.executable, HERE / "load.py", base, str(CLIENTS)],
+        input=lines,
+        capture_output=True,
+        text=True,
+        check=True,
+    )
+    return dict(json.loads(done.stdout))
+
+
+def posts(world: worlds.World, depots: tuple[str, ...], count: int) -> list[dict[str, Any]]:
+    """Requests that post a visit each, spread over depots and sections."""
+    made = []
+    for number in range(count):
+        depot = depots[number % len(depots)]
+        section = world.sections[(number // len(depots)) % len(world.sections)]
+        at = worlds.NOW - timedelta(seconds=count - number)
+        body = json.dumps(worlds.wire(worlds.visit(section, at)))
+        made.append({"path": f"/v1/depots/{depot}/visits", "key": world.keys[depot], "body": body})
+    return made
+
+
+def p1(servers: postgres.Databases) -> None:
+    """One visit a request: share of the same app writing the same rows and judging nothing."""
+    for commit in ("", SLOW_COMMIT):
+        for depot_count in (1, 16):
+            shares = {}
+            for module in ("floor", "service"):
+                with servers.cloned(_empty) as url:
+                    world = worlds.build(url, depot_count, 320)
+                    if commit:
+                        with psycopg.connect(plain(url), autocommit=True) as connection:
+                            connection.execute(commit)
+                    world.service.database.close()
+                    requests = posts(world, world.depots, 1500 if not commit or depot_count > 1 else 600)
+                    with served(module, url) as base:
+                        load(base, requests[:WARM_UP])
+                        shares[module] = load(base, requests[WARM_UP:])
+            ours, floor = shares["service"]["per_second"], shares["floor"]["per_second"]
+            name = f"{depot_count} depot{'s' if depot_count > 1 else ''}{', commit of 5 ms' if commit else ''}"
+            say("P1", f"{name}: {ours / floor:.2f} of the floor ({ours:.0f}/s of {floor:.0f}/s; first bar 0.4, aim 0.7)")
+
+
+def _empty(_url: str) -> None:
+    """A template with nothing in it: worlds migrate it themselves."""
+
+
+def p2(servers: postgres.Databases) -> None:
+    """200 visits a request: readings a second as a share of raw COPY of the readings."""
+    import floor
+
+    with servers.cloned(_empty) as url:
+        world = worlds.build(url, 1, 2000)
+        batches = []
+        for number in range(12):
+            several = [
+                worlds.wire(worlds.visit(world.sections[(number * 200 + place) % 2000], worlds.NOW))
+                for place in range(200)
+            ]
+            batches.append(several)
+        requests = [
+            {"path": "/v1/depots/depot-00/visits/batch", "key": world.keys["depot-00"], "body": json.dumps(batch)}
+            for batch in batches
+        ]
+        world.service.database.close()
+        with served("service", url) as base:
+            began = time.perf_counter()
+            one_at_a_time(base, requests[:2])
+            began = time.perf_counter()
+            one_at_a_time(base, requests[2:])
+            took = time.perf_counter() - began
+        readings = sum(len(visit["readings"]) for batch in batches[2:] for visit in batch)
+        ours = readings / took
+        with psycopg.connect(plain(url), autocommit=True) as connection:
+            connection.execute("TRUNCATE reading")
+        raw = floor.copy_readings(plain(url), "depot-00", [v for batch in batches for v in batch], time.perf_counter)
+    say("P2", f"{ours / raw:.2f} of raw COPY ({ours:.0f} of {raw:.0f} readings/s; first bar 0.2, aim 0.4)")
+
+
+def one_at_a_time(base: str, requests: list[dict[str, Any]]) -> None:
+    """Post one after another on one connection."""
+    import httpx
+
+    with httpx.Client(base_url=base, timeout=60) as client:
+        for one in requests:
+            headers = {"Authorization": f"Bearer {one['key']}", "Content-Type": "application/json"}
+            answer = client.post(one["path"], content=one["body"], headers=headers)
+            assert answer.status_code in (200, 201), answer.text[:300]
+            assert '"refused"' not in answer.text
+
+
+def main() -> None:
+    """Run the named measurements."""
+    known = {"p1": p1, "p2": p2}
+    parser = argparse.ArgumentParser(description=__doc__)
+    parser.add_argument("names", nargs="*", help=f"of {', '.join(known)}; all if none is named")
+    names = parser.parse_args().names or list(known)
+    with postgres.databases() as servers:
+        for name in names:
+            known[name](servers)
+
+
+if __name__ == "__main__":
+    main()
