@@ -123,7 +123,8 @@ def serve(settings: Settings, *, host: str, port: int, workers: int) -> None:
                 held.enter_context(FileLock(path.with_name(f"{path.name}.lock"), timeout=0))
             except Timeout:
                 raise ConflictError(f"Another process serves {path}.") from None
-        options: dict[str, Any] = {"host": host, "port": port, "log_config": None, "server_header": False}
+        options: dict[str, Any] = {"host": host, "port": port, "log_config": None, "access_log": False}
+        options["server_header"] = False
         options["timeout_graceful_shutdown"] = STOPS_WITHIN_S
         if workers == 1:
             logs.to_stderr(settings.log_level)
