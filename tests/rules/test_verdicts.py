@@ -223,6 +223,15 @@ def test_a_residual_failure_is_cleared_only_with_its_shunt() -> None:
     assert case.verdict().verdict == "within"
 
 
+@pytest.mark.parametrize("least", [None, Bound(0.1, WRONG)])
+def test_a_failure_by_the_step_alone_stays_open(least: Bound | None) -> None:
+    """0.95 Ω on 0.1 Ω steps reaches to 1.05 Ω, over a maximum of 1 Ω that the reading itself keeps."""
+    case = Case(limit(minimum=least, maximum=Bound(1.0, WRONG)))
+    case.visit(DAY, 0.95)
+    case.visit(LATER, 0.5, "wet")
+    assert (case.verdict().verdict, codes(case.verdict())) == ("outside", ["not_repeated_dry"])
+
+
 def test_a_right_side_failure_needs_no_repeat() -> None:
     case = Case(limit(minimum=Bound(0.5, RIGHT)))
     case.visit(DAY, 0.4)
