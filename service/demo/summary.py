@@ -49,8 +49,6 @@ def where_to_look(base: str, keys: Path) -> Iterator[str]:
     """Addresses to open, and a request to try."""
     yield f"Weekly list: {base}/v1/depots/{DEPOT}/audits/latest/list?format=html"
     yield f"API:         {base}/docs"
-    yield f"Keys:        {keys} (any user name, a key as password)"
-    yield (
-        f"Try:         curl -H \"Authorization: Bearer $(jq -r .read '{keys}')\" "
-        f"'{base}/v1/depots/{DEPOT}/sections?compliance=no'"
-    )
+    yield f"Keys:        {keys}, by scope"
+    yield f"Try:         curl -u me:READ_KEY '{base}/v1/depots/{DEPOT}/sections?compliance=no'"
+    yield "In a browser any name will do, with a key as the password."
