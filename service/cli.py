@@ -11,6 +11,8 @@ import json
 import os
 import secrets
 import sys
+from collections.abc import Iterator
+from contextlib import contextmanager
 from datetime import date, timedelta
 from pathlib import Path
 from typing import Annotated, NoReturn
@@ -18,6 +20,7 @@ from typing import Annotated, NoReturn
 import typer
 from pydantic import ValidationError
 
+from service.application.context import Service
 from service.errors import Fault, NotAcceptableError, ShuntbookError, StorageFaultError
 from service.records.unit_of_work import Actor
 from service.settings import PREFIX, Settings, from_environment
@@ -109,15 +112,15 @@ def migrate() -> None:
 def worker() -> None:
     """Run due audits every hour, beside the servers on PostgreSQL."""
     from service.api import logs
-    from service.app import make_service
     from service.jobs.worker import work
 
-    settings = _settings()
-    service = make_service(settings)
-    if service.database.is_sqlite:
-        raise StorageFaultError("On SQLite `shuntbook serve` does this itself; a worker needs PostgreSQL.")
-    logs.to_stderr(settings.log_level)
-    work(service)
+    with _running() as service:
+        if service.database.is_sqlite:
+            raise StorageFaultError(
+                "On SQLite `shuntbook serve` does this itself; a worker needs PostgreSQL."
+            )
+        logs.to_stderr(_settings().log_level)
+        work(service)
 
 
 @cli.command()
@@ -128,10 +131,10 @@ def audit(
     ] = None,
 ) -> None:
     """Judge a depot as of a day and keep the result; the same day again gives what is kept."""
-    from service.app import make_service
     from service.application import audits
 
-    row = audits.run(make_service(_settings()), _actor(), depot, _day(as_of))
+    with _running() as service:
+        row = audits.run(service, _actor(), depot, _day(as_of))
     print(json.dumps(audits.wire(row), indent=2, ensure_ascii=False))
 
 
@@ -147,13 +150,11 @@ def create_key(
     days: Annotated[int | None, typer.Option(help="Days until it expires.", min=1, max=3660)] = None,
 ) -> None:
     """Issue a key. Its text is printed once, alone on the standard output, and kept nowhere."""
-    from service.app import make_service
     from service.application import access
 
-    service = make_service(_settings())
-    expires = None if days is None else service.clock() + timedelta(days=days)
-    wanted = access.Wanted(label, holder, scope, depot, device, expires)
-    with service.unit_of_work(_actor()) as tx:
+    with _running() as service, service.unit_of_work(_actor()) as tx:
+        expires = None if days is None else tx.now + timedelta(days=days)
+        wanted = access.Wanted(label, holder, scope, depot, device, expires)
         text = access.create(tx, wanted, secrets.token_bytes(32))
     print(text)
 
@@ -161,10 +162,9 @@ def create_key(
 @keys.command("list")
 def list_keys() -> None:
     """Every key ever issued, one JSON object a line; never their texts."""
-    from service.app import make_service
     from service.application import access
 
-    with make_service(_settings()).read() as connection:
+    with _running() as service, service.read() as connection:
         found = access.listed(connection)
     for key in found:
         print(json.dumps(access.content(key), ensure_ascii=False))
@@ -173,10 +173,9 @@ def list_keys() -> None:
 @keys.command("revoke")
 def revoke_key(label: Annotated[str, typer.Argument(help="The key's label.")]) -> None:
     """Make a key useless from now on."""
-    from service.app import make_service
     from service.application import access
 
-    with make_service(_settings()).unit_of_work(_actor()) as tx:
+    with _running() as service, service.unit_of_work(_actor()) as tx:
         access.revoke(tx, label)
     print(f"revoked {label}")
 
@@ -189,17 +188,16 @@ def import_sections(
 ) -> None:
     """Record a whole file of track circuits: all of it, or nothing with every bad line named."""
     from service.api import section_files
-    from service.app import make_service
     from service.application import sections_import
 
-    service = make_service(_settings())
     given = section_files.read(file.read_bytes())
-    if dry_run:
-        with service.read(snapshot=True) as connection:
-            done = sections_import.rehearse(connection, depot, given, service.clock())
-    else:
-        with service.unit_of_work(_actor()) as tx:
-            done = sections_import.run(tx, depot, given)
+    with _running() as service:
+        if dry_run:
+            with service.read(snapshot=True) as connection:
+                done = sections_import.rehearse(connection, depot, given, service.clock())
+        else:
+            with service.unit_of_work(_actor()) as tx:
+                done = sections_import.run(tx, depot, given)
     print(f"{'would be ' if dry_run else ''}created {done.created}, changed {done.changed}, ", end="")
     print(f"left as they are {done.unchanged}")
 
@@ -209,10 +207,9 @@ def verify_journal(
     records: Annotated[bool, typer.Option("--records", help="Also compare stored visits.")] = False,
 ) -> None:
     """Walk every chain; names the first line of each that does not fit, and exits with 1."""
-    from service.app import make_service
     from service.application import verification
 
-    with make_service(_settings()).read(snapshot=True) as connection:
+    with _running() as service, service.read(snapshot=True) as connection:
         found = [
             f"{broken.depot}: line {broken.sequence}: {broken.reason}"
             for broken in verification.broken_chains(connection)
@@ -232,10 +229,9 @@ def verify_journal(
 @cli.command("rebuild-latest")
 def rebuild_latest(depot: Annotated[str, typer.Argument(help="The depot.")]) -> None:
     """Derive the latest readings of a depot again from all its visits; changes nothing if all is well."""
-    from service.app import make_service
     from service.application import visits
 
-    with make_service(_settings()).unit_of_work(_actor()) as tx:
+    with _running() as service, service.unit_of_work(_actor()) as tx:
         count = visits.rebuild_latest(tx, depot)
     print(f"derived the latest readings of {count} track circuits")
 
@@ -276,6 +272,17 @@ def _settings() -> Settings:
     except ValidationError as error:
         names = ", ".join(f"{PREFIX}{one['loc'][0]}".upper() for one in error.errors())
         raise NotAcceptableError(f"Not a value it can have: {names}.") from None
+
+
+@contextmanager
+def _running() -> Iterator[Service]:
+    from service.app import make_service
+
+    service = make_service(_settings())
+    try:
+        yield service
+    finally:
+        service.database.close()
 
 
 def _actor() -> Actor:
