@@ -16,7 +16,7 @@ from service.electrical.changes import with_ballast, with_emf, with_feed_ohm
 from service.electrical.circuit import PlainCircuit, operating_point
 from service.electrical.estimate import Reading
 from service.electrical.shunt import residual_voltage
-from service.errors import NonPhysicalError
+from service.errors import NoAnswerError, NonPhysicalError
 
 # Gauss-Newton with the register's values as a start settles in about five rounds.
 _ROUNDS = 30
@@ -99,6 +99,8 @@ def fit(circuit: PlainCircuit, sight: Sight, doubt: Doubt) -> Fit:
     ------
     NonPhysicalError
         A doubt or a reading not greater than zero, infinite ballast.
+    NoAnswerError
+        Code `ill_conditioned`: doubts so wide beside the readings that nothing is left to count on.
 
     Notes
     -----
@@ -119,13 +121,12 @@ def fit(circuit: PlainCircuit, sight: Sight, doubt: Doubt) -> Fit:
     settled = np.zeros(shape, dtype=np.bool_)
     for _ in range(_ROUNDS):
         normal, pull = _normal(circuit, sight, prior, x)
-        step = np.clip(-np.linalg.solve(normal, pull[..., np.newaxis])[..., 0], -_LONGEST_STEP, _LONGEST_STEP)
+        step = np.clip(-(_inverse(normal) @ pull[..., np.newaxis])[..., 0], -_LONGEST_STEP, _LONGEST_STEP)
         x = x + step
         settled = np.asarray(np.abs(step).max(axis=-1) <= _SETTLED)
         if settled.all():
             break
-    covariance = np.asarray(np.linalg.inv(_normal(circuit, sight, prior, x)[0]), dtype=np.float64)
-    return Fit(moved(circuit, x), covariance, settled)
+    return Fit(moved(circuit, x), _inverse(_normal(circuit, sight, prior, x)[0]), settled)
 
 
 def moved(circuit: PlainCircuit, x: Reals) -> PlainCircuit:
@@ -151,6 +152,16 @@ def _normal(circuit: PlainCircuit, sight: Sight, prior: Reals, x: Reals) -> tupl
     slope = slopes(lambda near: _misses(moved(circuit, near), sight)[0], x, miss)
     normal = np.einsum("...ri,...r,...rj->...ij", slope, weight, slope) + prior[..., np.newaxis] * np.eye(5)
     return normal, np.einsum("...ri,...r,...r->...i", slope, weight, miss) + prior * x
+
+
+def _inverse(normal: Reals) -> Reals:
+    """Inverse of the normal matrix, scaled to a diagonal of ones so that only its shape can be too much."""
+    scale = 1 / np.sqrt(np.diagonal(normal, axis1=-2, axis2=-1))
+    scales = scale[..., :, np.newaxis] * scale[..., np.newaxis, :]
+    try:
+        return np.asarray(np.linalg.inv(normal * scales) * scales, dtype=np.float64)
+    except np.linalg.LinAlgError as error:
+        raise NoAnswerError("ill_conditioned", "the doubts are too wide to fit these readings") from error
 
 
 def slopes(answer: Callable[[Reals], Reals], x: Reals, here: Reals) -> Reals:

@@ -152,9 +152,9 @@ def test_ngspice_still_says_what_is_kept() -> None:
 
 
 @pytest.mark.ngspice
-@pytest.mark.parametrize("seed", [1, 2])
-def test_live_circuits(seed: int) -> None:
-    for case in list(ngspice_ladders.plain_cases(random.Random(seed)))[:24]:
+def test_live_circuits() -> None:
+    """Circuits of another seed than the kept ones."""
+    for case in list(ngspice_ladders.plain_cases(random.Random(1)))[:12]:
         check_plain(case, ngspice_ladders.solve_plain(case))
-    for case in list(ngspice_ladders.layout_cases(random.Random(seed)))[:12]:
+    for case in list(ngspice_ladders.layout_cases(random.Random(1)))[:5]:
         check_layout(case, ngspice_ladders.solve_layout(case))
