@@ -15,6 +15,9 @@ import numpy as np
 from service.electrical.arrays import Path, not_negative, passive, positive, positive_or_infinite
 from service.errors import NonPhysicalError
 
+# Beside the ohms of a feed or a relay the nodal equations lose a shorter piece of rail in rounding.
+_SHORTEST_M = 1e-3
+
 
 @dataclass(frozen=True, slots=True)
 class Leg:
@@ -126,6 +129,8 @@ class Layout:
             raise NonPhysicalError(("relay", "drop_away_v"), "a relay does not drop away over its pick-up")
         for at, leg in enumerate(self.legs):
             positive(("legs", at, "length_m"), leg.length_m)
+            if leg.length_m < _SHORTEST_M:
+                raise NonPhysicalError(("legs", at, "length_m"), "a leg is at least a millimetre long")
         for at, bond in enumerate(self.bonds):
             positive(("bonds", at, "resistance_ohm"), bond.resistance_ohm)
 
@@ -216,13 +221,14 @@ def with_short(layout: Layout, joint: Joint) -> Layout:
 def with_break(layout: Layout, leg: Leg, rail: int, position_m: float) -> Layout:
     """Cut rail 0 or 1 of a leg at a place from 0 to its length [m]; both ends included.
 
-    At an end the rail parts from its terminal there; between, the leg becomes two of the same name.
+    At an end, or within a millimetre of it, the rail parts from its terminal there; between, the leg
+    becomes two of the same name.
     """
     stub = f"{leg.name}/rail{rail + 1} cut at {leg.offset_m + position_m!r} m"
     pieces: tuple[Leg, ...]
-    if position_m == 0:
+    if position_m < _SHORTEST_M:
         pieces = (replace(leg, start=_swapped(leg.start, rail, stub)),)
-    elif position_m == leg.length_m:
+    elif position_m > leg.length_m - _SHORTEST_M:
         pieces = (replace(leg, end=_swapped(leg.end, rail, stub)),)
     else:
         whole = f"{stub}, other rail"
