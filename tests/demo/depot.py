@@ -11,8 +11,10 @@ from typing import Any
 
 from service.application import audits
 from service.application.context import Service
+from service.demo import folder
 from service.demo.build import SEED, build
 from service.demo.lines import DEPOT
+from service.records import migrations
 from service.records.engine import Database
 
 NOW = datetime(2026, 12, 1, 10, 30, tzinfo=UTC)
@@ -22,6 +24,7 @@ NOW = datetime(2026, 12, 1, 10, 30, tzinfo=UTC)
 class Demo:
     """A built demo. `seconds` is the processor time it took; `told` what was said meanwhile."""
 
+    directory: Path
     service: Service
     keys: dict[str, str]
     counts: dict[str, int]
@@ -36,24 +39,24 @@ def service_on(path: Path, now: datetime) -> Service:
     return Service(Database(f"sqlite:///{path}", 2), lambda: now, lambda: "0" * 8)
 
 
-def built(path: Path, now: datetime) -> dict[str, Any]:
-    """Fill a migrated database; what came of it."""
+def built(directory: Path, now: datetime) -> dict[str, Any]:
+    """Build a demo in a folder, as the command does; what came of it."""
+    path = folder.make_fresh(directory)
+    migrations.upgrade(f"sqlite:///{path}")
     service = service_on(path, now)
     told: list[str] = []
     before = process_time()
     found = build(service, SEED, Random(5).randbytes, told.append)
+    seconds = process_time() - before
     service.database.close()
-    return {
-        "keys": found.keys,
-        "counts": found.counts,
-        "seconds": process_time() - before,
-        "told": told,
-    }
+    folder.write_keys(directory, found.keys)
+    return {"keys": found.keys, "counts": found.counts, "seconds": seconds, "told": told}
 
 
-def opened(path: Path, now: datetime, known: dict[str, Any]) -> Demo:
+def opened(directory: Path, now: datetime, known: dict[str, Any]) -> Demo:
     """A built demo with its latest list read."""
-    service = service_on(path, now)
+    service = service_on(folder.database(directory), now)
     with service.read(snapshot=True) as connection:
         weekly = audits.weekly_list(connection, DEPOT, None)
-    return Demo(service, **known, listed={shown["section"]: shown for shown in weekly.sections})
+    listed = {shown["section"]: shown for shown in weekly.sections}
+    return Demo(directory, service, **known, listed=listed)

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import shutil
 from datetime import UTC, date, datetime, timedelta
 from itertools import pairwise
 from pathlib import Path
@@ -146,10 +145,8 @@ def test_the_first_lines_name_the_gravest(demo: Demo) -> None:
     ],
     ids=str,
 )
-def test_on_other_days_it_shows_the_same(sqlite_template: Path, tmp_path: Path, now: datetime) -> None:
-    path = tmp_path / "demo.db"
-    shutil.copy(sqlite_template, path)
-    demo = opened(path, now, built(path, now))
+def test_on_other_days_it_shows_the_same(tmp_path: Path, now: datetime) -> None:
+    demo = opened(tmp_path, now, built(tmp_path, now))
     for fault in PLANTED:
         test_a_planted_fault_shows_as_what_it_is(demo, fault)
     test_nothing_else_is_listed(demo)
