@@ -21,8 +21,15 @@ def start(service: Service) -> Callable[[], None]:
     from apscheduler.schedulers.background import BackgroundScheduler
 
     scheduler = BackgroundScheduler(timezone="UTC")
-    scheduler.add_job(_tick, "cron", args=(service,), minute=0, coalesce=True, max_instances=1)
-    scheduler.add_job(_tick, args=(service,), misfire_grace_time=None)
+    scheduler.add_job(
+        _tick,
+        "cron",
+        args=(service,),
+        minute=0,
+        next_run_time=service.clock(),
+        misfire_grace_time=None,
+        coalesce=True,
+    )
     scheduler.start()
 
     def stop() -> None:
