@@ -268,6 +268,26 @@ def upgrade() -> None:
         )
 
     op.create_table(
+        "latest",
+        sa.Column("depot", columns.Name(), nullable=False),
+        sa.Column("section", columns.Name(), nullable=False),
+        sa.Column("quantity", columns.Name(), nullable=False),
+        sa.Column("test_point", columns.Name(), nullable=False),
+        sa.Column("visit", columns.Name(), nullable=False),
+        sa.Column("visited_at", columns.UtcDateTime(), nullable=False),
+        sa.Column("as_found", sa.Float(), nullable=True),
+        sa.Column("as_left", sa.Float(), nullable=True),
+        sa.Column("comparison", sa.String(), nullable=False),
+        sa.Column("instrument", columns.Name(), nullable=True),
+        sa.Column("shunt_ohm", sa.Float(), nullable=True),
+        sa.Column("source", sa.String(), nullable=True),
+        sa.Column("doubtful", sa.String(), nullable=True),
+        sa.ForeignKeyConstraint(
+            ["depot", "section"], ["section.depot", "section.section"], name=op.f("fk_latest_depot_section")
+        ),
+        sa.PrimaryKeyConstraint("depot", "section", "quantity", "test_point", name=op.f("pk_latest")),
+    )
+    op.create_table(
         "section_version",
         sa.Column("depot", columns.Name(), nullable=False),
         sa.Column("section", columns.Name(), nullable=False),
@@ -410,29 +430,6 @@ def upgrade() -> None:
         batch_op.create_index("ix_visit_section", ["depot", "section", "visited_at"], unique=False)
 
     op.create_table(
-        "latest",
-        sa.Column("depot", columns.Name(), nullable=False),
-        sa.Column("section", columns.Name(), nullable=False),
-        sa.Column("quantity", columns.Name(), nullable=False),
-        sa.Column("test_point", columns.Name(), nullable=False),
-        sa.Column("visit", columns.Name(), nullable=False),
-        sa.Column("visited_at", columns.UtcDateTime(), nullable=False),
-        sa.Column("as_found", sa.Float(), nullable=True),
-        sa.Column("as_left", sa.Float(), nullable=True),
-        sa.Column("comparison", sa.String(), nullable=False),
-        sa.Column("instrument", columns.Name(), nullable=True),
-        sa.Column("shunt_ohm", sa.Float(), nullable=True),
-        sa.Column("source", sa.String(), nullable=True),
-        sa.Column("doubtful", sa.String(), nullable=True),
-        sa.ForeignKeyConstraint(
-            ["depot", "section"], ["section.depot", "section.section"], name=op.f("fk_latest_depot_section")
-        ),
-        sa.ForeignKeyConstraint(
-            ["depot", "visit"], ["visit.depot", "visit.visit"], name=op.f("fk_latest_depot_visit")
-        ),
-        sa.PrimaryKeyConstraint("depot", "section", "quantity", "test_point", name=op.f("pk_latest")),
-    )
-    op.create_table(
         "reading",
         sa.Column("depot", columns.Name(), nullable=False),
         sa.Column("visit", columns.Name(), nullable=False),
@@ -491,7 +488,6 @@ def downgrade() -> None:
         batch_op.drop_index("ix_reading_section")
 
     op.drop_table("reading")
-    op.drop_table("latest")
     with op.batch_alter_table("visit", schema=None) as batch_op:
         batch_op.drop_index("ix_visit_section")
         batch_op.drop_index("ix_visit_replaces")
@@ -509,6 +505,7 @@ def downgrade() -> None:
         batch_op.drop_index("ix_section_version_book")
 
     op.drop_table("section_version")
+    op.drop_table("latest")
     with op.batch_alter_table("finding", schema=None) as batch_op:
         batch_op.drop_index(
             "uq_finding_open_identity",

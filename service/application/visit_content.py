@@ -9,6 +9,7 @@ import re
 from collections.abc import Iterator, Mapping
 from dataclasses import dataclass
 from datetime import datetime, timedelta
+from operator import itemgetter
 from typing import Any
 
 from service.errors import Fault
@@ -92,8 +93,9 @@ def _stated(values: Mapping[str, Any]) -> dict[str, Any]:
 def digest(draft: Draft) -> str:
     """SHA-256 over the version tag and what the visit states, in RFC 8785 form.
 
-    Members equal to their default are left out, so a member added later changes no old digest; times are
-    UTC; readings, tasks and work are sorted. Nothing the server adds is in it.
+    Members equal to their default are left out, so a member added later changes no old digest; times
+    are UTC; readings, tasks and work are sorted by what makes each the only one of its visit. Nothing
+    the server adds is in it.
     """
     stated: dict[str, Any] = _stated({name: getattr(draft, name) for name in _PLAIN})
     stated.update(visit=draft.visit, section=draft.section, visited_at=instant_text(draft.visited_at))
@@ -105,9 +107,10 @@ def digest(draft: Draft) -> str:
     for reading in readings:
         if reading["comparison"] == Comparison.EQ:
             del reading["comparison"]
-    for name, items in (("tasks", tasks), ("readings", readings)):
-        if items:
-            stated[name] = sorted(items, key=canonical)
+    if tasks:
+        stated["tasks"] = sorted(tasks, key=itemgetter("task"))
+    if readings:
+        stated["readings"] = sorted(readings, key=itemgetter("quantity", "test_point", "stage"))
     if draft.work_done:
         stated["work_done"] = sorted(draft.work_done)
     return digest_of(f"{DIGEST_TAG}\n{canonical(stated)}")

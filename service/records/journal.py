@@ -7,6 +7,7 @@ line before. Appending takes the journal head, the last lock of a unit of work.
 from __future__ import annotations
 
 import json
+import re
 from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 from datetime import UTC, datetime
@@ -62,22 +63,31 @@ class _ExoticError(Exception):
 
 
 def _plain(value: Any) -> Any:
-    if isinstance(value, dict):
+    kind = type(value)
+    if kind is dict:
         return {key: _plain(member) for key, member in value.items()}
-    if isinstance(value, list):
+    if kind is list:
         return [_plain(member) for member in value]
-    if isinstance(value, float):
-        if value.is_integer() and abs(value) < 2**53:
+    if kind is float:
+        if value.is_integer() and abs(value) < _EXACT:
             return int(value)
-        if not 1e-4 <= abs(value) < 1e16:
+        if not _FROM <= abs(value) < _BELOW:
             raise _ExoticError
-    elif isinstance(value, str):
-        if not value.isascii() and any(0xD800 <= ord(sign) <= 0xDFFF for sign in value):
+    elif kind is int:
+        if not -_EXACT < value < _EXACT:
             raise _ExoticError
-        return str(value)
-    elif isinstance(value, int) and abs(value) >= 2**53:
+    elif isinstance(value, str) and not value.isascii() and _SURROGATE.search(value):
         raise _ExoticError
     return value
+
+
+_EXACT = 2**53
+"""Integers below it are doubles, exactly."""
+
+_FROM, _BELOW = 1e-4, 1e16
+"""Between them the standard encoder writes a double without an exponent, as RFC 8785 does."""
+
+_SURROGATE = re.compile("[\ud800-\udfff]")
 
 
 def instant_text(instant: datetime) -> str:

@@ -79,7 +79,17 @@ def write(cursor: psycopg.Cursor[Any], depot: str, visit: dict[str, Any], body: 
     )
     values = columns(depot, visit)
     cursor.execute(READINGS, tuple(values.values()))
-    names = ("depot", "visit", "quantity", "test_point", "section", "visited_at", "comparison", "value", "instrument")
+    names = (
+        "depot",
+        "visit",
+        "quantity",
+        "test_point",
+        "section",
+        "visited_at",
+        "comparison",
+        "value",
+        "instrument",
+    )
     cursor.execute(LATEST, tuple(values[name] for name in (*names, "shunt_ohm", "source")))
     cursor.execute(STATUS, (depot, visit["section"], now.date(), now.date()))
     line = {

@@ -129,7 +129,13 @@ def book_content() -> dict[str, Any]:
         "clause": "B8",
         **said,
     }
-    return {"dry_ballast_ohm_km": None, "limits": limits, "tasks": [task], "combinations": [permitted], "notes": []}
+    return {
+        "dry_ballast_ohm_km": None,
+        "limits": limits,
+        "tasks": [task],
+        "combinations": [permitted],
+        "notes": [],
+    }
 
 
 @dataclass(frozen=True)

@@ -147,7 +147,7 @@ class Latest(SQLModel, table=True):
     reading that is judged: as left where there is one, else as found."""
 
     __tablename__ = "latest"
-    __table_args__ = (within_depot("section", of="section"), within_depot("visit", of="visit"))
+    __table_args__ = (within_depot("section", of="section"),)
 
     depot: str = key()
     section: str = key()
