@@ -6,7 +6,6 @@ revealed: where would a train then go undetected? What a layout is stands in `la
 
 from __future__ import annotations
 
-from collections.abc import Iterator
 from dataclasses import dataclass
 
 import numpy as np
@@ -230,21 +229,18 @@ def _undetected(layout: Layout, hiding: Leakage, shunt_ohm: float) -> tuple[Stre
 
         held = spans(margin, np.linspace(0.0, leg.length_m, _SHUNT_PLACES))
         found += [(leg.name, leg.offset_m + low, leg.offset_m + high) for low, high in held]
-    return tuple(_merged(found))
+    return _merged(found)
 
 
-def _merged(found: list[tuple[str, float, float]]) -> Iterator[Stretch]:
+def _merged(found: list[tuple[str, float, float]]) -> tuple[Stretch, ...]:
     """Join stretches that meet where a rail was cut."""
-    last: tuple[str, float, float] | None = None
+    merged: list[Stretch] = []
     for name, low, high in sorted(found):
-        if last is not None and last[0] == name and low <= last[2]:
-            last = (name, last[1], max(high, last[2]))
-            continue
-        if last is not None:
-            yield Stretch(*last)
-        last = (name, low, high)
-    if last is not None:
-        yield Stretch(*last)
+        if merged and merged[-1].leg == name and low <= merged[-1].to_m:
+            merged[-1] = Stretch(name, merged[-1].from_m, max(high, merged[-1].to_m))
+        else:
+            merged.append(Stretch(name, low, high))
+    return tuple(merged)
 
 
 def _given(layout: Layout) -> Leakage:

@@ -136,6 +136,13 @@ def test_plain_line_cut_inside_keeps_its_stretches_in_metres_of_the_leg() -> Non
     assert {"a/rail1", "a/rail2", "c/rail1"} <= set(inside)
 
 
+def test_stretches_that_meet_at_the_break_are_one() -> None:
+    """A train of 100 ohm goes undetected everywhere, also on both sides of where the rail is cut."""
+    fault = bonding_proof(plain_line(), Ranges((10.0, 10.0), None), 100.0).opened["a/rail1"]
+    assert fault.worst_position_m == pytest.approx(569.0, abs=0.5)
+    assert fault.undetected_stretches == (Stretch("a", 0.0, 1000.0),)
+
+
 def test_ac_layouts_are_proved_as_well() -> None:
     layout = replace(points(series=False), frequency_hz=50.0, loop_ohm_per_km=0.3 + 0.6j)
     proof = bonding_proof(layout, DRY, 0.3)

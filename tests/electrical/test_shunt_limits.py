@@ -32,7 +32,7 @@ def bisected(circuit: PlainCircuit, position_m: float, threshold_v: float) -> fl
 
     while pull(high) <= threshold_v:
         high *= 2
-    for _ in range(80):
+    for _ in range(30):
         middle = (low + high) / 2
         low, high = (middle, high) if pull(middle) <= threshold_v else (low, middle)
     return low
