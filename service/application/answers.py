@@ -1,4 +1,7 @@
-"""The JSON members of statuses, verdicts and tasks, as answers, findings and lists all show them."""
+"""The JSON members of statuses, verdicts and tasks, as answers, findings and lists all show them.
+
+One place, so that a verdict reads the same wherever it is shown; no wire model is needed for it.
+"""
 
 from __future__ import annotations
 

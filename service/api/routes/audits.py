@@ -1,4 +1,7 @@
-"""Audits and the weekly list that is printed from each."""
+"""Audits and the weekly list that is printed from each.
+
+What an audit finds is decided in `application.audits`; how a list is laid out, in `reports`.
+"""
 
 from __future__ import annotations
 

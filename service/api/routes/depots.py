@@ -1,4 +1,7 @@
-"""Depots: open, list, read, edit. What belongs to a depot has routes of its own."""
+"""Depots: open, list, read, edit. What belongs to a depot has routes of its own.
+
+What lies under a depot has routes of its own.
+"""
 
 from __future__ import annotations
 

@@ -1,4 +1,7 @@
-"""Findings and the responses to them."""
+"""Findings and the responses to them.
+
+They are made by visits and audits; a route only reads them or answers for one.
+"""
 
 from __future__ import annotations
 

@@ -1,4 +1,7 @@
-"""For whoever runs the service: is it alive, is it ready, what has it done. No key is needed."""
+"""For whoever runs the service: is it alive, is it ready, what has it done. No key is needed.
+
+No key is asked for here, and nothing of the records is told.
+"""
 
 from __future__ import annotations
 

@@ -1,4 +1,7 @@
-"""The journal as a change feed: follow it from the sequence of a snapshot."""
+"""The journal as a change feed: follow it from the sequence of a snapshot.
+
+It only reads: lines are appended by whatever changes a record.
+"""
 
 from __future__ import annotations
 

@@ -1,4 +1,7 @@
-"""The caller's own key. Keys are issued and revoked by an operator's command, not over HTTP."""
+"""The caller's own key. Keys are issued and revoked by an operator's command, not over HTTP.
+
+Keys are made and revoked by the operator on the command line, not over HTTP.
+"""
 
 from __future__ import annotations
 

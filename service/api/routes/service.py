@@ -1,4 +1,7 @@
-"""What the service says of itself: version, limits, quantities, tasks, and the pages of its problems."""
+"""What the service says of itself: version, limits, quantities, tasks, and the pages of its problems.
+
+Nothing here belongs to a depot.
+"""
 
 from __future__ import annotations
 

@@ -1,4 +1,7 @@
-"""The status of one track circuit, as of any day and as known at any instant."""
+"""The status of one track circuit, as of any day and as known at any instant.
+
+It is judged from the records at each request; nothing is written here.
+"""
 
 from __future__ import annotations
 

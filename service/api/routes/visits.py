@@ -1,4 +1,7 @@
-"""Visits: posted one by one or in batches, voided, read again."""
+"""Visits: posted one by one or in batches, voided, read again.
+
+Reading the items of a batch one by one is done here, taking them in `application.visits`.
+"""
 
 from __future__ import annotations
 

@@ -1,4 +1,7 @@
-"""Audits, weekly lists, findings and responses on the wire."""
+"""Audits, weekly lists, findings and responses on the wire.
+
+The list in other formats than JSON is laid out in `reports`.
+"""
 
 from __future__ import annotations
 

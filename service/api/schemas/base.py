@@ -6,7 +6,7 @@ enumeration words but neither `true` nor "1.5" for a number.
 
 from __future__ import annotations
 
-from datetime import UTC, datetime
+from datetime import UTC
 from typing import Annotated
 
 from pydantic import AfterValidator, AwareDatetime, BaseModel, ConfigDict, PlainSerializer, StringConstraints
@@ -48,5 +48,3 @@ Instant = Annotated[
     ),
 ]
 """RFC 3339 instant; any offset accepted, `Z` answered."""
-
-

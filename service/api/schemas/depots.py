@@ -1,4 +1,7 @@
-"""Depots on the wire."""
+"""Depots on the wire.
+
+What lies under a depot has schemas of its own.
+"""
 
 from __future__ import annotations
 

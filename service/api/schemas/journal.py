@@ -1,4 +1,7 @@
-"""A line of the journal on the wire."""
+"""A line of the journal on the wire.
+
+The content of a line has the shape of the record it speaks of.
+"""
 
 from __future__ import annotations
 

@@ -1,4 +1,7 @@
-"""How an access key is shown to whoever holds it: never the key itself."""
+"""How an access key is shown to whoever holds it: never the key itself.
+
+A key itself is never shown again.
+"""
 
 from __future__ import annotations
 

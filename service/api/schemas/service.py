@@ -1,4 +1,7 @@
-"""What the service says of itself: its limits, quantities and tasks."""
+"""What the service says of itself: its limits, quantities and tasks.
+
+Nothing here belongs to a depot.
+"""
 
 from __future__ import annotations
 

@@ -1,4 +1,7 @@
-"""Statuses, verdicts and task states on the wire."""
+"""Statuses, verdicts and task states on the wire.
+
+Their examples serve the schemas of visits, audits and findings too.
+"""
 
 from __future__ import annotations
 

@@ -1,4 +1,7 @@
-"""Visits on the wire: as handhelds post them, as they are answered and as they are read again."""
+"""Visits on the wire: as handhelds post them, as they are answered and as they are read again.
+
+A posted visit becomes the draft that `application.visits` takes; nothing is judged here.
+"""
 
 from __future__ import annotations
 

@@ -1,4 +1,7 @@
-"""Depots and access keys."""
+"""Depots and access keys.
+
+Keys belong to the service; a depot is the first column of every other table.
+"""
 
 from __future__ import annotations
 

@@ -1,4 +1,7 @@
-"""Audits, their rows, and findings with their responses."""
+"""Audits, their rows, and findings with their responses.
+
+An audit and its rows never change; a finding does, from audit to audit.
+"""
 
 from __future__ import annotations
 

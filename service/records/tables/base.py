@@ -1,4 +1,7 @@
-"""The naming of constraints, and how columns are declared in the tables beside this file."""
+"""The naming of constraints, and how columns are declared in the tables beside this file.
+
+No table is declared here.
+"""
 
 from __future__ import annotations
 

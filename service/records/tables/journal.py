@@ -1,4 +1,7 @@
-"""The journal: a chain of lines for each depot, and one for the service itself (`_service`)."""
+"""The journal: a chain of lines for each depot, and one for the service itself (`_service`).
+
+Lines are only ever appended; `records.journal` says how they are chained.
+"""
 
 from __future__ import annotations
 
