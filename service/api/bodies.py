@@ -59,9 +59,15 @@ def _faults(error: ValidationError, body: bytes) -> tuple[Fault, ...]:
     )
 
 
-def _fault(kind: str, loc: tuple[int | str, ...], message: str, document: Any) -> Fault:
+def told(kind: str, message: str) -> tuple[str, str]:
+    """Code and reason of what pydantic found, in our words where its own repeat the input."""
     code, reason = _REASONS.get(kind, (kind, ""))
-    return Fault(code, reason or message.removeprefix("Value error, "), pointer=_pointer(kind, loc, document))
+    return code, reason or message.removeprefix("Value error, ")
+
+
+def _fault(kind: str, loc: tuple[int | str, ...], message: str, document: Any) -> Fault:
+    code, reason = told(kind, message)
+    return Fault(code, reason, pointer=_pointer(kind, loc, document))
 
 
 def _pointer(kind: str, loc: tuple[int | str, ...], document: Any) -> str:

@@ -149,6 +149,9 @@ def _complete_operation(
             ways = ["key", "key_as_password"] if method == "GET" else ["key"]
             operation["security"] = [{way: []} for way in ways]
             operation["x-scope"] = call.scope or "any"
+        if call is conditional.edits:
+            required = next(one for one in operation["parameters"] if one["name"] == "if-match")
+            required["required"] = True  # optional to the framework, so that its absence is a 428
         if isinstance(call, JsonBody):
             content = {"application/json": {"schema": {"$ref": references[call.model]}}}
             operation["requestBody"] = {"required": True, "content": content}

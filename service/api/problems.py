@@ -17,6 +17,7 @@ from starlette.responses import Response
 from starlette.routing import Match
 
 from service import errors
+from service.api.bodies import told
 from service.api.problem_kinds import KINDS, Kind
 from service.errors import Fault, ShuntbookError
 
@@ -114,7 +115,7 @@ def _on_parameters(request: Request, error: Exception) -> Response:
     found = [(str(one["loc"][0]), str(one["loc"][-1]), one) for one in error.errors()]
     if any(place == "path" for place, _, _ in found):
         return _on_shuntbook_error(request, errors.NotFoundError("There is no such record."))
-    faults = tuple(Fault(str(one["type"]), str(one["msg"]), parameter=name) for _, name, one in found)
+    faults = tuple(Fault(*told(one["type"], one["msg"]), parameter=name) for _, name, one in found)
     refused = errors.NotAcceptableError("A parameter cannot be taken as it is.", faults)
     return _on_shuntbook_error(request, refused)
 
