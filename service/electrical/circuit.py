@@ -271,27 +271,6 @@ def operating_point(circuit: PlainCircuit, shunt: Shunt | None = None) -> Operat
     )
 
 
-def rail_voltage(circuit: PlainCircuit, position_m: RealLike) -> Phasors:
-    """Voltage between the rails of a clear circuit at any distance from the feed end [V].
-
-    Raises
-    ------
-    NonPhysicalError
-        Path `("position_m",)`: outside the section.
-
-    Examples
-    --------
-    >>> circuit = PlainCircuit(0.0, Feed(4.0, 5.0), Line(1000.0, 0.34, 3.0), Relay(10.0, 0.0, 0.9, 0.6))
-    >>> [round(v, 5) for v in rail_voltage(circuit, np.array([0.0, 1000.0])).real.tolist()]
-    [1.31597, 1.20526]
-    """
-    share = share_of(circuit, position_m, ("position_m",))
-    ends = ends_of(circuit)
-    point = operating_point(circuit)
-    rest = ends.line.part(1 - share)
-    return phasor(point.relay_end_rail_v * (rest.a + rest.b / ends.relay_ohm))
-
-
 def share_of(circuit: PlainCircuit, position_m: RealLike, path: Path) -> Reals:
     """Share of the line before a position, from 0 at the feed end to 1.
 

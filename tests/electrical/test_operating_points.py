@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import itertools
 import math
 from dataclasses import replace
 
@@ -17,9 +18,10 @@ from service.electrical.circuit import (
     PlainCircuit,
     Shunt,
     operating_point,
-    rail_voltage,
 )
-from service.electrical.power import stages
+from service.electrical.layout import Bond, Layout, LayoutFeed, LayoutRelay, Leg
+from service.electrical.network import Leakage, network
+from service.electrical.power import rail_voltage, stages
 from service.electrical.relay import Relay
 from service.electrical.shunt import residual_voltage
 from service.errors import NoAnswerError, NonPhysicalError
@@ -116,6 +118,38 @@ def test_rail_voltage_runs_from_end_to_end() -> None:
     volts = rail_voltage(circuit, np.array([0.0, 400.0, 1000.0]))
     assert complex(volts[0]) == pytest.approx(complex(point.feed_end_rail_v), rel=1e-12)
     assert complex(volts[2]) == pytest.approx(complex(point.relay_end_rail_v), rel=1e-12)
+
+
+@pytest.mark.parametrize("circuit", [uk(), ac()])
+@pytest.mark.parametrize(("place_m", "shunt_m"), [(200.0, 700.0), (700.0, 200.0), (300.0, 300.0)])
+def test_rail_voltage_with_a_shunt_anywhere(circuit: PlainCircuit, place_m: float, shunt_m: float) -> None:
+    """Against a nodal network with terminals at both places and a bond for the shunt."""
+    ends = sorted({0.0, place_m, shunt_m, 1000.0})
+    layout = Layout(
+        circuit.frequency_hz,
+        circuit.line.loop_ohm_per_km,
+        circuit.line.ballast_ohm_km,
+        None,
+        legs=tuple(
+            Leg(f"{low}", (f"{low}+", f"{low}-"), (f"{high}+", f"{high}-"), high - low)
+            for low, high in itertools.pairwise(ends)
+        ),
+        bonds=(Bond("shunt", (f"{shunt_m}+", f"{shunt_m}-"), 0.4),),
+        joints=(),
+        feed=LayoutFeed(("0.0+", "0.0-"), circuit.feed.emf_v, circuit.feed.series_ohm),
+        relay=LayoutRelay(
+            ("1000.0+", "1000.0-"), circuit.relay.impedance_ohm + circuit.relay.series_ohm, 1.0, 0.5
+        ),
+    )
+    solved = network(layout, Leakage(np.array([1 / circuit.line.ballast_ohm_km]), np.array([0.0])))
+    plus, minus = (solved.volts[0, solved.nodes[f"{place_m}{side}"]] for side in "+-")
+    found = rail_voltage(circuit, place_m, Shunt(shunt_m, 0.4))
+    assert complex(found) == pytest.approx(complex(plus - minus), rel=1e-8)
+
+
+def test_a_dead_short_leaves_no_rail_voltage_behind_it() -> None:
+    volts = rail_voltage(uk(), np.array([0.0, 400.0, 500.0, 1000.0]), Shunt(500.0, 0.0))
+    assert (np.abs(volts) > 0).tolist() == [True, True, False, False]
 
 
 def test_arrays_give_arrays_and_numbers_give_arrays_without_shape() -> None:
