@@ -15,6 +15,8 @@ from sqlalchemy.engine import Connection
 from service.records.engine import Database
 from service.records.unit_of_work import Actor, Transaction, unit_of_work
 
+__all__ = ["Actor", "Service"]
+
 
 @dataclass(frozen=True, slots=True)
 class Service:
