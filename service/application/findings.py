@@ -21,7 +21,7 @@ from service.records.journal import canonical, instant_text
 from service.records.tables import Finding
 from service.records.unit_of_work import Transaction, local_day
 from service.rules.facts import Visit
-from service.rules.findings import FindingSeed, found_outside_seeds, identity
+from service.rules.findings import FindingSeed, found_outside_seeds, identity, weeks_open
 from service.rules.verdicts import Verdict
 from service.rules.words import FindingKind, FindingState
 
@@ -132,7 +132,6 @@ def _last_cleared(connection: Connection, depot: str, identities: list[str]) -> 
 def wire(row: Row[Any] | Mapping[str, Any], as_of: date) -> dict[str, Any]:
     """A finding as answers, lists and the journal show it, on a day."""
     values: Mapping[str, Any] = row if isinstance(row, Mapping) else row._asdict()
-    until = values["cleared_on"] or as_of
     response = None if values["response"] is None else json.loads(values["response"])
     return {
         "depot": values["depot"],
@@ -147,7 +146,7 @@ def wire(row: Row[Any] | Mapping[str, Any], as_of: date) -> dict[str, Any]:
         "opened_on": day(values["opened_on"]),
         "last_seen_on": day(values["last_seen_on"]),
         "cleared_on": day(values["cleared_on"]),
-        "weeks_open": max((until - values["opened_on"]).days, 0) // 7,
+        "weeks_open": weeks_open(values["opened_on"], values["cleared_on"] or as_of),
         "reopens": values["reopens"],
         "concession": values["concession"],
         "visit": values["visit"],

@@ -1,12 +1,12 @@
-"""What is wrong with a section and persists from audit to audit: found, merged with the open ones, ranked.
+"""What is wrong with a section and persists from audit to audit: found, merged with what stands, ranked.
 
-Identifiers, responses and tables are elsewhere; a finding here is what must be compared.
+Identifiers, responses and tables are elsewhere.
 """
 
 from __future__ import annotations
 
-from collections.abc import Iterable
-from dataclasses import dataclass, replace
+from collections.abc import Collection, Iterable, Mapping
+from dataclasses import dataclass
 from datetime import date, timedelta
 
 from service.rules.facts import SectionFacts
@@ -16,7 +16,6 @@ from service.rules.verdicts import Verdict
 from service.rules.words import (
     Compliance,
     FindingKind,
-    FindingState,
     Hazard,
     Stage,
     TaskState,
@@ -44,35 +43,18 @@ class FindingSeed:
 
 
 @dataclass(frozen=True, slots=True)
-class Finding:
-    """A finding as kept: what of it decides whether a later one is the same."""
-
-    finding: str
-    kind: FindingKind
-    hazard: Hazard | None
-    quantity: str | None
-    test_point: str | None
-    task: str | None
-    state: FindingState
-    opened_on: date
-    last_seen_on: date
-    cleared_on: date | None = None
-
-
-@dataclass(frozen=True, slots=True)
 class Merged:
-    """What a judgement does to a section's findings.
+    """What an audit does to findings, by what makes each the same.
 
-    `opened` are new, each with the cleared finding that it reopens, if any; `seen` are open still,
-    each with what was found now; `cleared` are no longer found.
+    `opened` were not open before, `seen` stand, `cleared` are no longer found.
     """
 
-    opened: tuple[tuple[FindingSeed, str | None], ...]
-    seen: tuple[tuple[Finding, FindingSeed], ...]
-    cleared: tuple[Finding, ...]
+    opened: tuple[str, ...]
+    seen: tuple[str, ...]
+    cleared: tuple[str, ...]
 
 
-def identity(one: FindingSeed | Finding) -> Identity:
+def identity(one: FindingSeed) -> Identity:
     """What makes two findings of one section the same finding."""
     return (one.kind, one.quantity, one.test_point, one.task)
 
@@ -170,38 +152,22 @@ def found_outside_seeds(verdicts: Iterable[Verdict]) -> tuple[FindingSeed, ...]:
     )
 
 
-def merge(findings: Iterable[Finding], seeds: Iterable[FindingSeed], as_of: date) -> Merged:
-    """Bring a section's findings up to a judgement as of a day.
+def merge(standing: Mapping[str, FindingKind], found: Collection[str]) -> Merged:
+    """Bring findings up to a judgement: those that stand with their kinds, and what was found now.
 
-    `findings` are the open ones, and of each cleared identity at least the last, so that what
-    returns names what it reopens. A finding is `new` on the day it was opened, `open` after that.
     What was found outside is never cleared here: only its response does that.
     """
-    still_open: dict[Identity, Finding] = {}
-    cleared_before: dict[Identity, Finding] = {}
-    for finding in sorted(findings, key=lambda one: (one.opened_on, one.finding)):
-        kept = cleared_before if finding.state is FindingState.CLEARED else still_open
-        kept[identity(finding)] = finding
-    opened, seen = [], []
-    for seed in seeds:
-        same = still_open.pop(identity(seed), None)
-        if same is None:
-            reopened = cleared_before.get(identity(seed))
-            opened.append((seed, None if reopened is None else reopened.finding))
-        else:
-            state = FindingState.NEW if same.opened_on == as_of else FindingState.OPEN
-            seen.append((replace(same, state=state, hazard=seed.hazard, last_seen_on=as_of), seed))
-    cleared = [
-        replace(finding, state=FindingState.CLEARED, cleared_on=as_of)
-        for finding in still_open.values()
-        if finding.kind is not FindingKind.FOUND_OUTSIDE
-    ]
-    return Merged(tuple(opened), tuple(seen), tuple(cleared))
+    seen = {name for name, kind in standing.items() if name in found or kind is FindingKind.FOUND_OUTSIDE}
+    return Merged(
+        opened=tuple(name for name in found if name not in standing),
+        seen=tuple(name for name in standing if name in seen),
+        cleared=tuple(name for name in standing if name not in seen),
+    )
 
 
-def weeks_open(finding: Finding, as_of: date) -> int:
-    """Whole weeks since it was opened, until it was cleared if it was."""
-    return ((finding.cleared_on or as_of) - finding.opened_on).days // 7
+def weeks_open(opened_on: date, until: date) -> int:
+    """Whole weeks from the day it was opened; none before it."""
+    return max((until - opened_on).days, 0) // 7
 
 
 _RANKS = {

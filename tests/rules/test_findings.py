@@ -2,14 +2,15 @@
 
 from __future__ import annotations
 
-from datetime import date
+from dataclasses import replace
+from datetime import date, timedelta
 from typing import Any
 
 import pytest
 
 from service.rules.findings import (
-    Finding,
     FindingSeed,
+    Merged,
     findings_of,
     found_outside_seeds,
     identity,
@@ -20,7 +21,7 @@ from service.rules.findings import (
 from service.rules.limits import Bound, Limit
 from service.rules.status import judge
 from service.rules.verdicts import found_outside
-from service.rules.words import FindingKind, FindingState, Hazard
+from service.rules.words import FindingKind, Hazard
 from support.rule_cases import AS_OF, INSTRUMENTS, RIGHT, WRONG, Case, concession, limit, reading, task
 
 DAY = date(2026, 5, 10)
@@ -157,68 +158,27 @@ def test_found_outside_is_of_what_was_found_not_of_what_was_left() -> None:
     assert found_outside_seeds(found[1:2]) == ()
 
 
-def kept(kind: str = "outside", state: str = "open", name: str = "f1", **given: Any) -> Finding:
-    values: dict[str, Any] = {
-        "hazard": WRONG,
-        "quantity": "drop_shunt",
-        "test_point": "relay_end",
-        "task": None,
-        "opened_on": date(2026, 5, 1),
-        "last_seen_on": date(2026, 5, 25),
-    }
-    return Finding(name, FindingKind(kind), state=FindingState(state), **(values | given))
-
-
 SEED = FindingSeed(FindingKind.OUTSIDE, RIGHT, "drop_shunt", "relay_end")
 
 
 def test_identity_is_neither_hazard_nor_edition() -> None:
-    assert identity(SEED) == identity(kept())
-    assert identity(SEED) != identity(kept(test_point="feed_end"))
+    assert identity(SEED) == identity(replace(SEED, hazard=WRONG, concession="c1"))
+    assert identity(SEED) != identity(replace(SEED, test_point="feed_end"))
 
 
-def test_a_new_finding() -> None:
-    merged = merge([], [SEED], AS_OF)
-    assert (merged.opened, merged.seen, merged.cleared) == (((SEED, None),), (), ())
-
-
-def test_one_that_stands() -> None:
-    ((finding, seed),) = merge([kept(state="new")], [SEED], AS_OF).seen
-    assert seed is SEED
-    assert (finding.state, finding.last_seen_on, finding.hazard) == (FindingState.OPEN, AS_OF, RIGHT)
-    ((same_day, _),) = merge([kept(state="new", opened_on=AS_OF)], [SEED], AS_OF).seen
-    assert same_day.state is FindingState.NEW
-
-
-def test_one_that_is_gone_is_cleared() -> None:
-    (finding,) = merge([kept()], [], AS_OF).cleared
-    assert (finding.state, finding.cleared_on, finding.last_seen_on) == (
-        FindingState.CLEARED,
-        AS_OF,
-        date(2026, 5, 25),
-    )
-
-
-def test_one_that_returns_is_new_and_names_the_last_before_it() -> None:
-    before = [
-        kept(state="cleared", name="f2", opened_on=date(2026, 4, 1)),
-        kept(state="cleared", name="f1", opened_on=date(2026, 3, 1)),
-    ]
-    assert merge(before, [SEED], AS_OF).opened == ((SEED, "f2"),)
-    assert merge(before, [], AS_OF).cleared == ()
+def test_what_is_new_what_stands_and_what_is_gone() -> None:
+    standing = {"stands": FindingKind.OUTSIDE, "gone": FindingKind.OVERDUE}
+    assert merge(standing, ["new", "stands"]) == Merged(("new",), ("stands",), ("gone",))
+    assert merge({}, ["new"]) == Merged(("new",), (), ())
 
 
 def test_found_outside_is_cleared_by_nothing_here() -> None:
-    merged = merge([kept("found_outside")], [], AS_OF)
-    assert (merged.opened, merged.seen, merged.cleared) == ((), (), ())
+    assert merge({"f": FindingKind.FOUND_OUTSIDE}, []) == Merged((), ("f",), ())
 
 
-@pytest.mark.parametrize(("days", "weeks"), [(0, 0), (6, 0), (7, 1), (20, 2)])
+@pytest.mark.parametrize(("days", "weeks"), [(-3, 0), (0, 0), (6, 0), (7, 1), (20, 2)])
 def test_weeks_open(days: int, weeks: int) -> None:
-    opened = date(2026, 5, 1)
-    as_of = date.fromordinal(opened.toordinal() + days)
-    assert weeks_open(kept(opened_on=opened), as_of) == weeks
-    assert weeks_open(kept(opened_on=opened, cleared_on=as_of), date(2027, 1, 1)) == weeks
+    assert weeks_open(DAY, DAY + timedelta(days=days)) == weeks
 
 
 def test_the_order_of_the_weekly_list() -> None:
