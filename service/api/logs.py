@@ -14,6 +14,7 @@ from collections.abc import Callable
 import structlog
 from prometheus_client import CollectorRegistry, Counter, Histogram
 from starlette.datastructures import MutableHeaders
+from starlette.requests import ClientDisconnect
 from starlette.types import ASGIApp, Message, Receive, Scope, Send
 from structlog.types import EventDict, Processor
 
@@ -126,6 +127,8 @@ class Frame:
         with structlog.contextvars.bound_contextvars(request=request_id):
             try:
                 await self.app(scope, receive, framed)
+            except ClientDisconnect:
+                log.info("client went away")
             except Exception as error:
                 log.error("fault", **whereabouts(error))  # noqa: TRY400, the message may repeat what was sent
                 if status:

@@ -64,9 +64,16 @@ def line_text(row: dict[str, Any]) -> str:
 
 
 def open_service_stream(connection: Connection) -> None:
-    """Begin the service's own chain, unless it has begun."""
+    """Begin the service's own chain, unless it has begun; two that begin it at once begin one."""
     if journal.SERVICE not in streams(connection):
-        journal.open_stream(connection, journal.SERVICE)
+        begun = {"depot": journal.SERVICE, "digest": journal.START}
+        connection.execute(
+            sa.text(
+                "INSERT INTO journal_head (depot, sequence, digest) VALUES (:depot, 0, :digest)"
+                " ON CONFLICT DO NOTHING"
+            ),
+            begun,
+        )
 
 
 def streams(connection: Connection) -> list[str]:
