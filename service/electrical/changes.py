@@ -75,6 +75,15 @@ def clear_case(circuit: AnyCircuit, spread: Spread) -> AnyCircuit:
     -------
     PlainCircuit
         Of the same class.
+
+    Examples
+    --------
+    >>> from service.electrical.circuit import Feed, Line, operating_point
+    >>> circuit = PlainCircuit(0.0, Feed(10.0, 7.2), Line(1000.0, 0.0578, 10.6), Relay(20.0, 0.0, 1.62, 1.10))
+    >>> spread = Spread((0.9, 1.1), (1.0, 1.0), (1.0, 1.5), (3.0, np.inf), 1.0, 1.0, (-10.0, 40.0), False)
+    >>> case = clear_case(circuit, spread)
+    >>> round(float(operating_point(case).relay_v.real), 3), round(float(case.relay.pick_up_v), 3)
+    (2.388, 1.747)
     """
     wet = with_ballast(circuit, spread.ballast_ohm_km[0])
     return _moved(wet, spread, 0, 1)
@@ -96,6 +105,17 @@ def occupied_case(circuit: AnyCircuit, spread: Spread) -> AnyCircuit:
     -------
     PlainCircuit
         Of the same class.
+
+    Examples
+    --------
+    The 20 ohm circuit of the Space Weather 2023 model, its coil at -10 °C, without leakage:
+
+    >>> from service.electrical.circuit import Feed, Line
+    >>> from service.electrical.shunt import shunt_limits
+    >>> circuit = PlainCircuit(0.0, Feed(10.0, 7.2), Line(1000.0, 0.0578, 10.6), Relay(20.0, 0.0, 1.62, 1.10))
+    >>> spread = Spread((1.0, 1.0), (1.0, 1.0), (1.0, 1.0), (3.0, np.inf), 1.0, 1.0, (-10.0, 40.0), False)
+    >>> round(float(shunt_limits(occupied_case(circuit, spread)).drop_shunt_ohm.worst.ohm), 3)
+    0.812
     """
     dry = with_ballast(circuit, spread.ballast_ohm_km[1])
     return _moved(dry, spread, 1, 0)

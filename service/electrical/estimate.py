@@ -206,6 +206,15 @@ def currents_from_voltages(
     ------
     NonPhysicalError
         Path `("frequency_hz",)`: not a DC circuit; path `("feed_v",)`: over the emf.
+
+    Examples
+    --------
+    >>> from service.electrical.circuit import Feed, Line
+    >>> from service.electrical.relay import Relay
+    >>> circuit = PlainCircuit(0.0, Feed(4.0, 5.0), Line(1000.0, 0.34, 3.0), Relay(10.0, 0.0, 0.9, 0.6))
+    >>> ends = currents_from_voltages(circuit, Reading(1.316, 0.002), Reading(1.205, 0.002), 0.01, 0.01)
+    >>> tuple(round(float(x), 4) for x in (ends.feed_a.value, ends.feed_a.u, ends.relay_a.value))
+    (0.5368, 0.0054, 0.1205)
     """
     if np.any(np.asarray(circuit.frequency_hz) != 0):
         raise NonPhysicalError(("frequency_hz",), "voltages alone give no currents in an AC circuit")

@@ -107,6 +107,18 @@ def fit(circuit: PlainCircuit, sight: Sight, doubt: Doubt) -> Fit:
     Gauss-Newton on logarithms: prior x = 0 with the doubts, each reading ln(model/measured) = 0 with
     its own, a measured drop shunt as ln(pull with it across/drop-away) = 0. Linear in the result's
     neighbourhood only: a relative uncertainty over some 0.3 is an order of size.
+
+    Examples
+    --------
+    A circuit whose register says 7.2 ohm, its rails read with the feed at some 5 ohm:
+
+    >>> from service.electrical.circuit import Feed, Line
+    >>> from service.electrical.relay import Relay
+    >>> circuit = PlainCircuit(0.0, Feed(10.0, 7.2), Line(1000.0, 0.0578, 10.6), Relay(20.0, 0.0, 1.62, 1.10))
+    >>> sight = Sight(relay_v=Reading(4.1, 0.04), feed_current_a=Reading(1.15, 0.01))
+    >>> found = fit(circuit, sight, Doubt(1.0, 0.02, 0.3, 0.1, 0.05))
+    >>> round(float(found.circuit.feed.series_ohm), 1), round(float(found.circuit.line.ballast_ohm_km), 1)
+    (5.1, 4.4)
     """
     positive(("line", "ballast_ohm_km"), circuit.line.ballast_ohm_km)
     doubts = (doubt.ballast, doubt.emf, doubt.feed_ohm, doubt.loop_ohm, doubt.drop_away)

@@ -178,7 +178,14 @@ def conductors(layout: Layout) -> dict[str, str]:
 
 
 def joined(pairs: Iterable[tuple[str, str]]) -> dict[str, str]:
-    """Group names that pairs connect, directly or through others: the group's one name for each."""
+    """Group names that pairs connect, directly or through others: the group's one name for each.
+
+    Examples
+    --------
+    >>> found = joined((("a", "b"), ("c", "d"), ("b", "e")))
+    >>> found["a"] == found["e"], found["a"] == found["c"]
+    (True, False)
+    """
     parent: dict[str, str] = {}
 
     def root(name: str) -> str:

@@ -101,7 +101,13 @@ class UniformLine:
 
 
 def sinhc(angle: Numbers) -> Numbers:
-    """Compute sinh(x)/x, exactly 1 at zero."""
+    """Compute sinh(x)/x, exactly 1 at zero.
+
+    Examples
+    --------
+    >>> round(float(sinhc(np.asarray(1.0))), 6)
+    1.175201
+    """
     return np.divide(_cosh_sinh(angle)[1], angle, out=np.ones_like(angle), where=angle != 0)
 
 

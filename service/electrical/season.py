@@ -93,9 +93,8 @@ def season(circuit: PlainCircuit, wet_ohm_km: float, dry_ohm_km: float, minimum_
         )
 
     def shunted(leakage: Reals) -> Reals:
-        """By how much the drop shunt is over its minimum, as a share of it."""
-        margin: Reals = 1 - minimum_shunt_ohm / shunt_limits(_at(circuit, leakage)).drop_shunt_ohm.worst.ohm
-        return margin
+        """By how much the drop shunt is over its minimum."""
+        return over_minimum(shunt_limits(_at(circuit, leakage)).drop_shunt_ohm.worst.ohm, minimum_shunt_ohm)
 
     curve = shunt_limits(_at(circuit, grid[::-1]))
     return Season(
@@ -115,6 +114,11 @@ def leakages(wet_ohm_km: float, dry_ohm_km: float, points: int) -> Reals:
     ------
     NonPhysicalError
         Wet over dry, or not greater than zero.
+
+    Examples
+    --------
+    >>> leakages(2.0, math.inf, 3).tolist()
+    [0.0, 0.25, 0.5]
     """
     positive(("wet_ohm_km",), wet_ohm_km)
     positive_or_infinite(("dry_ohm_km",), dry_ohm_km)
@@ -128,6 +132,19 @@ def ballast_of(leakage_s_per_km: Reals) -> Reals:
     return np.divide(
         1.0, leakage_s_per_km, out=np.full_like(leakage_s_per_km, np.inf), where=leakage_s_per_km > 0
     )
+
+
+def over_minimum(drop_shunt_ohm: Reals, minimum_ohm: float) -> Reals:
+    """Margin of a drop shunt over its minimum, from -1 for none to 1 for released with no train.
+
+    (R - Rmin)/(R + Rmin): zero at the minimum, and finite for every drop shunt there is.
+
+    Examples
+    --------
+    >>> over_minimum(np.array([0.0, 0.5, 1.5, np.inf]), 0.5).tolist()
+    [-1.0, 0.0, 0.5, 1.0]
+    """
+    return 1 - 2 * minimum_ohm / (minimum_ohm + drop_shunt_ohm)
 
 
 def _at(circuit: PlainCircuit, leakage: Reals) -> PlainCircuit:

@@ -1,7 +1,8 @@
-"""The adjustment of a feed that meets every requirement in every ballast, and the longest circuit.
+"""The adjustment of a feed that meets every requirement in every ballast.
 
 Requirements come from the caller. Settings of one variable only: resistance, emf or tap of the
-feed. How a circuit at one setting passes the seasons is shown in `season`.
+feed. How a circuit at one setting passes the seasons is shown in `season`, how long it may be in
+`longest`.
 """
 
 from __future__ import annotations
@@ -13,22 +14,19 @@ from typing import Literal, TypeAlias
 import numpy as np
 
 from service.electrical.arrays import Reals, positive
-from service.electrical.changes import with_ballast, with_emf, with_feed_ohm, with_feed_ratio, with_length
+from service.electrical.changes import with_ballast, with_emf, with_feed_ohm, with_feed_ratio
 from service.electrical.circuit import PlainCircuit
-from service.electrical.season import ballast_of, leakages
+from service.electrical.season import ballast_of, leakages, over_minimum
 from service.electrical.shunt import shunt_limits
 from service.electrical.spans import Span, peak, spans
-from service.errors import NoAnswerError, NonPhysicalError
+from service.errors import NonPhysicalError
 
 Adjust: TypeAlias = Literal["feed_ohm", "emf_v", "feed_ratio"]
 Name: TypeAlias = Literal["pick_up", "shunt", "excitation"]
 
-_NAMES: tuple[Name, ...] = ("pick_up", "shunt", "excitation")
-# Settings or lengths looked at before the edges are refined.
+NAMES: tuple[Name, ...] = ("pick_up", "shunt", "excitation")
+# Settings looked at before the edges are refined.
 _POINTS = 129
-# The same where both lengths and settings are looked at, in so many rounds of narrowing.
-_COARSE = 33
-_ROUNDS = 3
 # In AC the worst ballast may lie inside the range; in DC at an end of it.
 _BALLASTS = 65
 
@@ -83,7 +81,8 @@ class Setting:
         Where the least margin is greatest, in the window or outside.
     margins : dict
         At `best`, of each requirement: `pick_up` and `excitation` as a share of their voltage,
-        `shunt` as 1 - (test shunt)/(drop shunt at the residual share). Negative is not met.
+        `shunt` by `season.over_minimum`, the drop shunt being that at the residual share. Negative
+        is not met.
     opens : dict
         Empty where there is a window; else the best margin that each requirement can have while the
         others are met: easing that one by so much would open a window. -inf where the others
@@ -142,12 +141,12 @@ def setting(
     """
     if not low < high:
         raise NonPhysicalError(("low",), "the low end is not under the high end")
-    change = _changer(circuit, adjust)
+    change = adjusted_by(circuit, adjust)
     grid = np.linspace(low, high, _POINTS)
 
     def least(values: Reals) -> Reals:
         """Least margin at each setting."""
-        return _least(_margins(change(values), requirements))
+        return least_of(margins_of(change(values), requirements))
 
     best = peak(least, grid)
     margins = _named(change, requirements, best)
@@ -181,87 +180,29 @@ def stepped(
     tuple of dict
         In the order of `steps`; a step serves where none of its margins is negative, and the best
         one is that whose least margin is greatest.
+
+    Examples
+    --------
+    >>> from service.electrical.circuit import Feed, Line
+    >>> from service.electrical.relay import relay_by_current
+    >>> relay = relay_by_current(20.0, 0.0, 0.081, 0.055)
+    >>> circuit = PlainCircuit(0.0, Feed(10.0, 7.2), Line(1000.0, 0.0578, 3.0), relay)
+    >>> needs = Requirements(1.1, 0.5, 0.85, np.inf, 3.0, np.inf)
+    >>> [min(margins.values()) >= 0 for margins in stepped(circuit, needs, "feed_ohm", (4.0, 8.0, 12.0))]
+    [False, True, False]
     """
     if not steps:
         raise NonPhysicalError(("steps",), "no steps are given")
     values = np.asarray(steps, dtype=np.float64)
-    found = _margins(_changer(circuit, adjust)(values), requirements)
-    return tuple(dict(zip(_NAMES, map(float, column), strict=True)) for column in found.T)
+    found = margins_of(adjusted_by(circuit, adjust)(values), requirements)
+    return tuple(dict(zip(NAMES, map(float, column), strict=True)) for column in found.T)
 
 
-@dataclass(frozen=True, slots=True)
-class Longest:
-    """The longest circuit that meets the requirements [m] and what binds it, `range` where nothing does."""
-
-    length_m: float
-    binds: str
-
-
-def longest(
-    circuit: PlainCircuit,
-    requirements: Requirements,
-    upto_m: float,
-    adjustment: tuple[Adjust, float, float] | None,
-) -> Longest:
-    """Find the longest length at which the requirements are met.
-
-    Parameters
-    ----------
-    circuit : PlainCircuit
-        Plain numbers; its own length and ballast are left aside.
-    requirements : Requirements
-        What must hold, and over which ballast.
-    upto_m : float
-        Where the search ends [m].
-    adjustment : (str, float, float), optional
-        What may be adjusted for each length, and between which ends; None keeps the feed as it is.
-
-    Returns
-    -------
-    Longest
-        To a relative 1e-9 where the feed is kept, to 1e-4 where it is adjusted.
-
-    Raises
-    ------
-    NoAnswerError
-        Code `no_length`: met at no length.
-
-    Examples
-    --------
-    The 2008 exam question: 5 V, 12 ohm, 9 ohm relay of 40 mA, 2.5 ohm·km, lossless rails.
-
-    >>> from service.electrical.circuit import Feed, Line
-    >>> from service.electrical.relay import relay_by_current
-    >>> relay = relay_by_current(9.0, 0.0, 0.04, 0.0272)
-    >>> circuit = PlainCircuit(0.0, Feed(5.0, 12.0), Line(1000.0, 0.0, 2.5), relay)
-    >>> found = longest(circuit, Requirements(1.0, 0.06, 1.0, np.inf, 2.5, 2.5), 5000.0, None)
-    >>> round(found.length_m / 1000, 3), found.binds
-    (2.407, 'pick_up')
-    """
-    positive(("upto_m",), upto_m)
-    lengths = np.linspace(upto_m / _COARSE, upto_m, _COARSE)
-
-    def margins(lengths_m: Reals) -> Reals:
-        """Margins at each length, at the best setting where it may be adjusted."""
-        if adjustment is None:
-            return _margins(with_length(circuit, lengths_m[:, np.newaxis]), requirements)
-        return _best_margins(
-            with_length(circuit, lengths_m[:, np.newaxis, np.newaxis]), requirements, *adjustment
-        )
-
-    found = spans(lambda values: _least(margins(values)), lengths)
-    if not found:
-        raise NoAnswerError("no_length", "the requirements are met at no length up to the one given")
-    length_m = found[-1][1]
-    if length_m == upto_m:
-        return Longest(length_m, "range")
-    return Longest(length_m, _NAMES[int(np.argmin(margins(np.asarray([length_m]))[:, 0]))])
-
-
-def _changer(circuit: PlainCircuit, adjust: Adjust) -> Callable[[Reals], PlainCircuit]:
+def adjusted_by(circuit: PlainCircuit, adjust: Adjust) -> Callable[[Reals], PlainCircuit]:
     """Make the circuit at an array of settings, ballast to come on a last axis."""
 
     def feed_ohm(values: Reals) -> PlainCircuit:
+        """Resistance changed, reactance kept."""
         return with_feed_ohm(circuit, values + 1j * np.asarray(circuit.feed.series_ohm).imag)
 
     changes: dict[Adjust, Callable[[Reals], PlainCircuit]] = {
@@ -272,7 +213,7 @@ def _changer(circuit: PlainCircuit, adjust: Adjust) -> Callable[[Reals], PlainCi
     return lambda values: changes[adjust](values[..., np.newaxis])
 
 
-def _margins(circuit: PlainCircuit, requirements: Requirements) -> Reals:
+def margins_of(circuit: PlainCircuit, requirements: Requirements) -> Reals:
     """Least margin of each requirement over the ballast, the requirements on the first axis."""
     relay = circuit.relay
     dc = np.all(np.asarray(circuit.frequency_hz) == 0)
@@ -282,13 +223,14 @@ def _margins(circuit: PlainCircuit, requirements: Requirements) -> Reals:
     pull = relay.pull_v(found.relay_clear_v) / np.asarray(relay.pick_up_v)
     margins: tuple[Reals, ...] = (
         pull / requirements.least_pick_up - 1,
-        1 - requirements.minimum_shunt_ohm / found.drop_shunt_ohm.worst.ohm,
+        over_minimum(found.drop_shunt_ohm.worst.ohm, requirements.minimum_shunt_ohm),
         1 - pull / requirements.most_pick_up,
     )
     return np.asarray([margin.min(axis=-1) for margin in margins])
 
 
-def _least(margins: Reals) -> Reals:
+def least_of(margins: Reals) -> Reals:
+    """Least margin over the requirements on the first axis."""
     least: Reals = margins.min(axis=0)
     return least
 
@@ -296,8 +238,8 @@ def _least(margins: Reals) -> Reals:
 def _named(
     change: Callable[[Reals], PlainCircuit], requirements: Requirements, value: float
 ) -> dict[Name, float]:
-    margins = _margins(change(np.asarray([value])), requirements)[:, 0]
-    return dict(zip(_NAMES, map(float, margins), strict=True))
+    margins = margins_of(change(np.asarray([value])), requirements)[:, 0]
+    return dict(zip(NAMES, map(float, margins), strict=True))
 
 
 def _binding(
@@ -314,29 +256,12 @@ def _opens(
 ) -> dict[Name, float]:
     """What each requirement comes to where all others are met; those that this opens are in conflict."""
     opens: dict[Name, float] = {}
-    for at, name in enumerate(_NAMES):
-        others = [other for other in range(len(_NAMES)) if other != at]
+    for at, name in enumerate(NAMES):
+        others = [other for other in range(len(NAMES)) if other != at]
 
         def least(values: Reals, others: list[int] = others) -> Reals:
-            return _least(_margins(change(values), requirements)[others])
+            return least_of(margins_of(change(values), requirements)[others])
 
         edges = [edge for span in spans(least, grid) for edge in span]
         opens[name] = max((_named(change, requirements, edge)[name] for edge in edges), default=-np.inf)
     return opens
-
-
-def _best_margins(
-    circuit: PlainCircuit, requirements: Requirements, adjust: Adjust, low: float, high: float
-) -> Reals:
-    """Margins of each requirement at the best setting for each length, on the first axis of the circuit."""
-    change = _changer(circuit, adjust)
-    count = np.shape(circuit.line.length_m)[0]
-    row = np.arange(count)
-    lows, highs, best = np.full(count, low), np.full(count, high), np.full((len(_NAMES), count), -np.inf)
-    for _ in range(_ROUNDS):
-        values = np.linspace(lows, highs, _COARSE, axis=-1)
-        margins = _margins(change(values), requirements)
-        at = np.argmax(_least(margins), axis=-1)
-        lows, highs = values[row, np.maximum(at - 1, 0)], values[row, np.minimum(at + 1, _COARSE - 1)]
-        best = margins[:, row, at]
-    return best

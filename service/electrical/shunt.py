@@ -189,6 +189,17 @@ def lifting_shunts(circuit: PlainCircuit, position_m: RealLike) -> tuple[Reals, 
     Notes
     -----
     The quadratic of `shunt_limits` with a < 0: two positive roots where b > 0 and b^2 > 4 |a| |Z|^2.
+
+    Examples
+    --------
+    A relay whose control voltage is 1.4 rad from its ideal angle: down with no train, up with some shunts.
+
+    >>> from service.electrical.circuit import Feed, Line
+    >>> from service.electrical.relay import VaneRelay
+    >>> vane = VaneRelay(4 + 3j, 0.0, 1.5, 0.8, local_v=110.0, rated_local_v=110.0, ideal_angle_rad=-1.8)
+    >>> circuit = PlainCircuit(50.0, Feed(6.0, 0.2 + 2j), Line(800.0, 0.31 + 0.39j, 8.0), vane)
+    >>> [round(float(ohm), 2) for ohm in lifting_shunts(circuit, 0.0)]
+    [1.2, 2.99]
     """
     share = share_of(circuit, position_m, ("shunt", "position_m"))
     check_reach(circuit, position_m)

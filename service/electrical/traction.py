@@ -213,6 +213,16 @@ def largest_current(
         The limit is not greater than zero.
     NoAnswerError
         Code `degenerate`: the current puts nothing across the relay, so none is the largest.
+
+    Examples
+    --------
+    The circuit of `interference`, 450 m with a relay immune to 50 V:
+
+    >>> from service.electrical.circuit import Feed, Line
+    >>> from service.electrical.relay import Relay
+    >>> circuit = PlainCircuit(50.0, Feed(1.0, 5.0), Line(450.0, 0.72, np.inf), Relay(9000.0, 0.0, 1.4, 0.95))
+    >>> round(float(largest_current(circuit, 0.36, "feed_end", 0.001, 50.0)))
+    309
     """
     positive(("limit_v",), limit_v)
     for_one = np.abs(interference(circuit, 1.0, rail_ohm_per_km, train, axle_ohm))
@@ -248,6 +258,14 @@ def longest_immune(
     ------
     NoAnswerError
         Code `no_length`: over the limit however short.
+
+    Examples
+    --------
+    >>> from service.electrical.circuit import Feed, Line
+    >>> from service.electrical.relay import Relay
+    >>> circuit = PlainCircuit(50.0, Feed(1.0, 5.0), Line(450.0, 0.72, np.inf), Relay(9000.0, 0.0, 1.4, 0.95))
+    >>> round(longest_immune(circuit, 300.0, 0.36, "feed_end", 0.001, 50.0, 2000.0))
+    463
     """
     positive(("limit_v",), limit_v)
     positive(("upto_m",), upto_m)

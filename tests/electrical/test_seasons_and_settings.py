@@ -12,10 +12,11 @@ from hypothesis import strategies as st
 
 from service.electrical.changes import with_ballast, with_emf, with_feed_ohm, with_length
 from service.electrical.circuit import Feed, PlainCircuit, operating_point
+from service.electrical.longest import longest
 from service.electrical.presets import RailEnd, ac_single_rail
 from service.electrical.relay import Relay
 from service.electrical.season import season
-from service.electrical.setting import Requirements, longest, setting, stepped
+from service.electrical.setting import Requirements, setting, stepped
 from service.electrical.shunt import residual_voltage, shunt_limits
 from service.electrical.spans import peak, spans
 from service.errors import NoAnswerError, NonPhysicalError
@@ -143,6 +144,13 @@ def test_a_window_may_end_with_the_adjustment() -> None:
     found = setting(uk(), NEEDS, "feed_ohm", 6.0, 9.0)
     assert found.window == (6.0, 9.0)
     assert found.binds == ("range", "range")
+
+
+def test_a_feed_without_resistance_is_the_worst_setting_and_no_fault() -> None:
+    """Nothing shunts an ideal source at its own terminals: the adjustment may begin there all the same."""
+    found = setting(uk(), NEEDS, "feed_ohm", 0.0, 30.0)
+    assert found.window == pytest.approx(setting(uk(), NEEDS, "feed_ohm", 1.0, 30.0).window)
+    assert season(with_feed_ohm(uk(), 0.0), 3.0, math.inf, 0.5).shunts == ()
 
 
 def test_conflict_names_both_and_what_would_open_it() -> None:

@@ -28,8 +28,9 @@ from service.electrical.circuit import (
 )
 from service.electrical.estimate import BothEnds, Reading, ballast_from_readings, exact_pair
 from service.electrical.line import uniform_line
+from service.electrical.longest import longest
 from service.electrical.relay import Relay, VaneRelay, at_coil_temperature, relay_by_current
-from service.electrical.setting import Requirements, longest
+from service.electrical.setting import Requirements
 from service.electrical.shunt import residual_voltage, shunt_limits
 from service.electrical.traction import interference
 
