@@ -23,7 +23,7 @@ from service.api.schemas.service import (
     ServiceAnswer,
     UnitAnswer,
 )
-from service.application import tasks, visit_content, visits
+from service.application import tasks, visit_cautions, visit_content
 from service.errors import NotFoundError
 from service.rules.quantities import QUANTITIES, UNITS
 
@@ -45,7 +45,7 @@ def get_service(request: Request) -> Response:
             page_size=bounds.PAGE_SIZE,
             remarks_characters=bounds.REMARKS_CHARACTERS,
             clock_skew_s=int(visit_content.AHEAD.total_seconds()),
-            clock_offset_caution_s=visits.CLOCK_OFFSET_S,
+            clock_offset_caution_s=visit_cautions.CLOCK_OFFSET_S,
             caution=request.app.description,
         )
     )
