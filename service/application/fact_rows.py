@@ -133,7 +133,7 @@ def calibration_of(row: Row[Any]) -> rules.Calibration:
     return rules.Calibration(row.calibrated_on, row.due_on, CalibrationResult(row.result), step)
 
 
-def concession_of(row: Row[Any], known_at: datetime | None) -> rules.Concession:
+def concession_of(row: Any, known_at: datetime | None) -> rules.Concession:
     """The rule object of a row of `concession`; an end not yet known has not happened."""
     known = row.ended_at is not None and (known_at is None or row.ended_at <= known_at)
     return rules.Concession(
@@ -149,19 +149,18 @@ def concession_of(row: Row[Any], known_at: datetime | None) -> rules.Concession:
     )
 
 
-def version_on(versions: Sequence[Row[Any]], day: date) -> Row[Any] | None:
-    """The record in force on a day: the highest version that holds from then or earlier."""
+def version_on(versions: Sequence[Any], day: date) -> Any:
+    """The record in force on a day: the highest version that holds from then or earlier, or None."""
     return next((row for row in reversed(versions) if row.valid_from_on <= day), None)
 
 
-def returned_on(versions: Sequence[Row[Any]], day: date) -> date | None:
+def returned_on(versions: Sequence[Any], day: date) -> date | None:
     """The last day up to `day` on which the section came back from out of use."""
     if all(row.state != "out_of_use" for row in versions):
         return None
     returned, before = None, None
     for start in sorted({row.valid_from_on for row in versions if row.valid_from_on <= day}):
         row = version_on(versions, start)
-        assert row is not None
         if before == "out_of_use" and row.state == "in_use":
             returned = start
         before = row.state

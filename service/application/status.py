@@ -15,7 +15,8 @@ import sqlalchemy as sa
 from sqlalchemy.engine import Connection, Row
 
 from service.application.context import Service
-from service.application.facts import Moment, Register, gather
+from service.application.fact_queries import Found, Moment
+from service.application.facts import Register, assemble, gather
 from service.errors import Fault, NotAcceptableError, NotFoundError
 from service.records import bulk, journal
 from service.records.tables import Depot, Section
@@ -33,6 +34,14 @@ CLOCK = Actor("clock", "shuntbook")
 
 _KEPT = ("as_of", "compliance", "overdue", "worst_hazard", "next_due_on", "holds_until", "sequence")
 _UPSERT = "ON CONFLICT (depot, section) DO UPDATE SET " + ", ".join(f"{c} = excluded.{c}" for c in _KEPT)
+
+
+def judge_found(
+    connection: Connection, moment: Moment, sections: Sequence[str], known: Register, found: Found
+) -> Iterator[tuple[SectionFacts, Status]]:
+    """As `judge_sections`, of what was read already."""
+    for one in assemble(connection, moment, sections, known, found):
+        yield one.facts, judge(one.facts, one.book, one.editions, moment.as_of)
 
 
 @dataclass(frozen=True, slots=True)
@@ -59,18 +68,19 @@ def present(row: Row[Any], now: datetime) -> Moment:
 
 
 def judge_sections(
-    connection: Connection,
-    moment: Moment,
-    sections: Sequence[str] | None,
-    known: Register | None = None,
+    connection: Connection, moment: Moment, sections: Sequence[str] | None
 ) -> Iterator[tuple[SectionFacts, Status]]:
     """Facts and status of sections (None: all of the depot), in order of name."""
-    for found in gather(connection, moment, sections, known):
+    for found in gather(connection, moment, sections):
         yield found.facts, judge(found.facts, found.book, found.editions, moment.as_of)
 
 
-def summary_row(depot: str, status: Status, sequence: int) -> dict[str, Any]:
-    """The row of `status` that keeps a status's summary."""
+def summaries(depot: str, statuses: Iterable[Status]) -> bulk.Rows:
+    """The rows of `status` that keep the summaries of statuses, but for their sequence."""
+    return bulk.Rows(_status, [_summary_row(depot, status) for status in statuses], _UPSERT)
+
+
+def _summary_row(depot: str, status: Status) -> dict[str, Any]:
     return {
         "depot": depot,
         "section": status.section,
@@ -80,7 +90,6 @@ def summary_row(depot: str, status: Status, sequence: int) -> dict[str, Any]:
         "worst_hazard": status.worst_hazard,
         "next_due_on": status.next_due_on,
         "holds_until": status.holds_until,
-        "sequence": sequence,
     }
 
 
@@ -92,15 +101,14 @@ def rejudge_and_append(
     The journal head is taken last, so the summaries are stored with its sequence after it. Returns the
     sequence of the last line. With no entries the statuses keep the sequence of the head.
     """
-    statuses = [status for _, status in judge_sections(tx.connection, present(row, tx.now), sections)]
-    sequence = tx.append(row.depot, entries) if entries else journal.head(tx.connection, row.depot)[0]
-    store(tx.connection, row.depot, statuses, sequence)
+    judged = judge_sections(tx.connection, present(row, tx.now), sections)
+    kept = summaries(row.depot, (status for _, status in judged))
+    if entries:
+        return tx.write(row.depot, (), entries, kept)
+    sequence, _ = journal.head(tx.connection, row.depot)
+    rows = [{**each, "sequence": sequence} for each in kept.rows]
+    bulk.insert(tx.connection, kept.table, rows, kept.conflict)
     return sequence
-
-
-def store(connection: Connection, depot: str, statuses: Iterable[Status], sequence: int) -> None:
-    """Keep the summaries of statuses."""
-    bulk.insert(connection, _status, [summary_row(depot, status, sequence) for status in statuses], _UPSERT)
 
 
 def roll_due(service: Service, depot: str) -> None:

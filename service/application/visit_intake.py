@@ -12,15 +12,12 @@ from datetime import datetime
 from typing import Any
 from zoneinfo import ZoneInfo
 
-import sqlalchemy as sa
-from sqlalchemy.engine import Connection
-
 from service.application import section_records, visit_content
-from service.application.fact_rows import VISIT_COLUMNS, WITH_VOID, reading_of, version_on, visit_of
+from service.application.fact_rows import reading_of, version_on, visit_of
 from service.application.facts import Register
 from service.application.visit_content import Draft
+from service.application.visit_reads import Known
 from service.errors import ConflictError, Fault, ForbiddenError, NotAcceptableError, ShuntbookError
-from service.records.tables import VisitRow
 from service.records.unit_of_work import Transaction
 from service.rules import doubtful, verdicts
 from service.rules import facts as rules
@@ -29,56 +26,17 @@ from service.rules.quantities import to_base
 from service.rules.verdicts import Verdict
 from service.rules.words import SectionState, Stage
 
-_visit = VisitRow.__table__  # type: ignore[attr-defined]
-
-
-@dataclass(frozen=True, slots=True)
-class Known:
-    """A visit already stored. `columns` are those of `fact_rows.VISIT_COLUMNS`."""
-
-    columns: tuple[Any, ...]
-    section: str
-    replaces: str | None
-    digest: str
-    received_at: datetime
-    holder: str
-    found_outside: bool
-    clock_offset_s: int | None
-
-
-_KNOWN = tuple(_visit.c[name] for name in list(Known.__dataclass_fields__)[1:])
-
-
-def known(connection: Connection, depot: str, drafts: Sequence[Draft]) -> dict[str, Known]:
-    """Every stored visit of the drafts' sections, and those that the drafts repeat, replace or are
-    replaced by."""
-    ids = sorted({draft.visit for draft in drafts})
-    named = sorted({*ids, *(draft.replaces for draft in drafts if draft.replaces is not None)})
-    query = (
-        sa.select(*VISIT_COLUMNS, *_KNOWN)
-        .select_from(WITH_VOID)
-        .where(
-            _visit.c.depot == depot,
-            sa.or_(
-                _visit.c.section.in_(sorted({draft.section for draft in drafts})),
-                _visit.c.visit.in_(named),
-                _visit.c.replaces.in_(ids),
-            ),
-        )
-    )
-    width = len(VISIT_COLUMNS)
-    return {row[1]: Known(tuple(row[:width]), *row[width:]) for row in connection.execute(query)}
-
 
 @dataclass(frozen=True, slots=True)
 class Accepted:
-    """A draft that is or will be stored: as rules take it, its readings as rows, and those outside a
-    wrong-side limit of its day."""
+    """A draft that is or will be stored: as rules take it, its readings as rows and as rules take them, and
+    those outside a wrong-side limit of its day."""
 
     draft: Draft
     digest: str
     rule: rules.Visit
     rows: tuple[dict[str, Any], ...]
+    readings: tuple[rules.Reading, ...]
     outside: tuple[Verdict, ...]
 
     @property
@@ -107,6 +65,8 @@ class Intake:
     time_zone: str
     register: Register
     known: Mapping[str, Known]
+    visits: Mapping[str, Sequence[rules.Visit]]
+    """Each section's stored visits."""
     clock_offset_s: int | None
     accepted: dict[str, Accepted] = field(default_factory=dict)
 
@@ -156,26 +116,22 @@ class Intake:
             yield Fault("recovered_section", "the section had been recovered by then", "/section")
 
     def _replaces_faults(self, draft: Draft, replaces: str) -> Iterator[Fault]:
-        target = self._section_and_next(replaces)
-        if target is not None and target[0] != draft.section:
+        if self._section_of(replaces) not in (None, draft.section):
             reason = "names a visit of another section: one at the wrong section is voided instead"
             yield Fault("other_section", reason, "/replaces")
-        # A longer cycle needs a stored visit that replaces this one, and that one is in `known`.
+        following = {visit.visit: visit.replaces for visit in self.visits.get(draft.section, ())}
+        following |= {visit: item.draft.replaces for visit, item in self.accepted.items()}
         here: str | None = replaces
-        for _ in range(len(self.known) + len(self.accepted) + 1):
-            if here is None:
-                return
-            if here == draft.visit:
-                yield Fault("replaces_cycle", "the visits would replace each other in a circle", "/replaces")
-                return
-            found = self._section_and_next(here)
-            here = found[1] if found is not None else None
+        while here is not None and here != draft.visit:
+            here = following.pop(here, None)
+        if here is not None:
+            yield Fault("replaces_cycle", "the visits would replace each other in a circle", "/replaces")
 
-    def _section_and_next(self, visit: str) -> tuple[str, str | None] | None:
-        """The section of a visit and what it replaces, if it was received."""
+    def _section_of(self, visit: str) -> str | None:
+        """The section of a visit, if it was received."""
         if visit in self.accepted:
-            return self.accepted[visit].draft.section, self.accepted[visit].draft.replaces
-        return (self.known[visit].section, self.known[visit].replaces) if visit in self.known else None
+            return self.accepted[visit].draft.section
+        return self.known[visit].section if visit in self.known else None
 
     def _found_outside_by(self, visit: str) -> str | None:
         """The holder who sent a visit, if that one found a wrong-side failure."""
@@ -200,7 +156,7 @@ class Intake:
         outside: tuple[Verdict, ...] = ()
         if edition is not None:
             outside = verdicts.found_outside(record, edition, rule, plain, self.register.instruments)
-        return Accepted(draft, digest, rule, tuple(rows), outside)
+        return Accepted(draft, digest, rule, tuple(rows), tuple(plain), outside)
 
 
 def _reading_row(visit: str, reading: visit_content.ReadingDraft) -> dict[str, Any]:

@@ -6,21 +6,19 @@ One visit is a batch of one. Whether one is taken is decided in `visit_intake`, 
 
 from __future__ import annotations
 
-from collections import defaultdict
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
 from datetime import datetime
 from typing import Any
-from zoneinfo import ZoneInfo
 
 import sqlalchemy as sa
-from sqlalchemy.engine import Row
 
-from service.application import facts, findings, status, visit_content, visit_intake, visit_records
-from service.application.fact_rows import visit_of
+from service.application import findings, status, visit_content, visit_intake, visit_records
+from service.application.fact_queries import Found, find
 from service.application.visit_cautions import Caution, cautions
 from service.application.visit_content import Draft
-from service.application.visit_intake import Accepted, Decision, Intake, Known, judged_columns
+from service.application.visit_intake import Accepted, Decision, Intake, judged_columns
+from service.application.visit_reads import Read, lock_and_read
 from service.errors import ConflictError, NotFoundError, ShuntbookError
 from service.records import bulk, journal, latest
 from service.records.journal import instant_text
@@ -55,40 +53,60 @@ def post(tx: Transaction, depot: str, drafts: Sequence[Draft], clock_offset_s: i
     A draft that cannot be taken is refused by itself, with a problem; the others are stored. The same id
     with the same content is `already_stored`, and is told again what it shows.
     """
-    row = tx.lock_depot(depot)
-    sections = tx.lock_sections(depot, [draft.section for draft in drafts])
-    moment = status.present(row, tx.now)
-    register = facts.remembered(tx, moment, row.epoch, sorted(sections))
-    known = visit_intake.known(tx.connection, depot, drafts)
-    intake = Intake(tx, row.time_zone, register, known, clock_offset_s)
+    read = lock_and_read(tx, depot, drafts)
+    intake = Intake(tx, read.moment.time_zone, read.register, read.known, read.found.visits, clock_offset_s)
     decisions = [intake.decide(draft) for draft in drafts]
     accepted = list(intake.accepted.values())
-    _store(tx, depot, accepted, known, clock_offset_s)
-    register = replace(register, visits=_visits_now(row.time_zone, known, accepted))
-    judged, sequence = _judge(tx, row, register, decisions, clock_offset_s)
+    rows = [
+        bulk.Rows(_visit, [_visit_row(tx, depot, item, clock_offset_s) for item in accepted]),
+        bulk.Rows(_reading, [row for item in accepted for row in _reading_rows(depot, item)]),
+    ]
+    found = _with_accepted(read, accepted)
+    replacing = _replacing(read, accepted)
+    if replacing:  # which readings decide is told by all that is stored
+        bulk.insert_all(tx.connection, *rows)
+        rows = []
+        found = _derived(tx, read, replacing, found)
+    else:
+        rows.append(latest.advanced(rows[1].rows))
+    answered = sorted({one.draft.section for one in decisions if one.accepted is not None})
+    judged = {
+        facts.record.section: (facts, now)
+        for facts, now in status.judge_found(tx.connection, read.moment, answered, read.register, found)
+    }
+    sequence = _keep(tx, depot, rows, accepted, judged, clock_offset_s)
     return [_outcome(decision, judged, sequence) for decision in decisions]
 
 
-def _store(
-    tx: Transaction,
-    depot: str,
-    accepted: Sequence[Accepted],
-    known: Mapping[str, Known],
-    clock_offset_s: int | None,
-) -> None:
-    visit_rows = [_visit_row(tx, depot, item, clock_offset_s) for item in accepted]
-    reading_rows = [row for item in accepted for row in _reading_rows(depot, item)]
-    replacing = {item.draft.section for item in accepted if item.draft.replaces is not None}
-    replaced = {visit.replaces for visit in known.values() if visit.replaces is not None}
-    replacing |= {item.draft.section for item in accepted if item.draft.visit in replaced}
-    bulk.insert_all(
-        tx.connection,
-        bulk.Rows(_visit, visit_rows),
-        bulk.Rows(_reading, reading_rows),
-        latest.advanced([row for row in reading_rows if row["section"] not in replacing]),
+def _replacing(read: Read, accepted: Sequence[Accepted]) -> list[str]:
+    """Sections where a visit just taken replaces one, or is replaced by one that came before it."""
+    replaced = {visit.replaces for visit in read.known.values()}
+    return sorted(
+        {
+            item.draft.section
+            for item in accepted
+            if item.draft.replaces is not None or item.draft.visit in replaced
+        }
     )
-    for section in sorted(replacing):
-        visit_records.derive_latest(tx.connection, depot, section)
+
+
+def _with_accepted(read: Read, accepted: Sequence[Accepted]) -> Found:
+    """What was read, with the visits just taken; without those ahead of the depot's midnight."""
+    visits = {section: list(several) for section, several in read.found.visits.items()}
+    readings = {section: list(several) for section, several in read.found.readings.items()}
+    for item in accepted:
+        if item.rule.visited_on <= read.moment.as_of:
+            visits.setdefault(item.draft.section, []).append(item.rule)
+            readings.setdefault(item.draft.section, []).extend(item.readings)
+    return Found(visits, readings, read.found.concessions)
+
+
+def _derived(tx: Transaction, read: Read, sections: Sequence[str], found: Found) -> Found:
+    """Derive `latest` of sections again and read them anew."""
+    for section in sections:
+        visit_records.derive_latest(tx.connection, read.moment.depot, section)
+    anew = find(tx.connection, read.moment, sections, read.register.history)
+    return Found({**found.visits, **anew.visits}, {**found.readings, **anew.readings}, found.concessions)
 
 
 def _visit_row(tx: Transaction, depot: str, item: Accepted, clock_offset_s: int | None) -> dict[str, Any]:
@@ -137,52 +155,27 @@ def rebuild_latest(tx: Transaction, depot: str) -> int:
     return len(sections)
 
 
-def _visits_now(
-    time_zone: str, known: Mapping[str, Known], accepted: Sequence[Accepted]
-) -> dict[str, list[rules.Visit]]:
-    """Each section's visits with those just stored."""
-    zone = ZoneInfo(time_zone)
-    found: dict[str, list[rules.Visit]] = defaultdict(list)
-    for stored in known.values():
-        *columns, voided_at = stored.columns[1:]
-        found[stored.section].append(visit_of(zone, *columns, voided=voided_at is not None))
-    for item in accepted:
-        found[item.draft.section].append(item.rule)
-    return found
-
-
 _Judged = Mapping[str, tuple[rules.SectionFacts, Status]]
 
 
-def _judge(
+def _keep(
     tx: Transaction,
-    row: Row[Any],
-    register: facts.Register,
-    decisions: Sequence[Decision],
+    depot: str,
+    rows: Sequence[bulk.Rows],
+    accepted: Sequence[Accepted],
+    judged: _Judged,
     clock_offset_s: int | None,
-) -> tuple[_Judged, int]:
-    """Judge every section concerned; keep findings, journal lines and statuses of what was stored."""
-    answered = {decision.draft.section for decision in decisions if decision.accepted is not None}
-    accepted = [decision.accepted for decision in decisions if decision.outcome == "stored"]
-    moment = status.present(row, tx.now)
-    judged = {
-        found.record.section: (found, verdict)
-        for found, verdict in status.judge_sections(tx.connection, moment, sorted(answered), register)
-    }
+) -> int:
+    """Keep rows, findings, journal lines and statuses of what was taken; the journal's sequence then."""
     lines: list[journal.Entry] = []
     for item in accepted:
-        assert item is not None
-        lines.extend(findings.raise_found_outside(tx, row.depot, item.draft.section, item.rule, item.outside))
+        lines.extend(findings.raise_found_outside(tx, depot, item.draft.section, item.rule, item.outside))
         content = _wire(item.draft, tx, item.digest, clock_offset_s)
         lines.append(journal.Entry("visit_stored", "visit", item.draft.visit, (item.draft.section,), content))
     if not lines:
-        return judged, journal.head(tx.connection, row.depot)[0]
-    sequence = tx.append(row.depot, lines)
-    touched = {item.draft.section for item in accepted if item is not None}
-    status.store(
-        tx.connection, row.depot, [judged[name][1] for name in sorted(touched & judged.keys())], sequence
-    )
-    return judged, sequence
+        return journal.head(tx.connection, depot)[0]
+    touched = sorted({item.draft.section for item in accepted} & judged.keys())
+    return tx.write(depot, rows, lines, status.summaries(depot, (judged[name][1] for name in touched)))
 
 
 def _wire(draft: Draft, tx: Transaction, digest: str, clock_offset_s: int | None) -> dict[str, Any]:

@@ -15,6 +15,9 @@ import sqlalchemy as sa
 from sqlalchemy.dialects import postgresql
 from sqlalchemy.engine import Connection
 
+from service.records import several
+from service.records.several import Asked
+
 
 @dataclass(frozen=True, slots=True)
 class Rows:
@@ -30,12 +33,16 @@ class Rows:
         return tuple(self.rows[0])
 
 
+_HEAD = "SELECT sequence FROM journal_head WHERE depot = :stream"
+
 Shape = tuple[tuple[sa.Table, tuple[str, ...], str], ...]
 
 
 @lru_cache(maxsize=64)
-def _unnest(shape: Shape) -> sa.TextClause:
+def _unnest(shape: Shape, *, sequenced: bool = False) -> sa.TextClause:
     *first, last = (_one_unnest(place, *each) for place, each in enumerate(shape))
+    if sequenced:
+        last = last.replace(") SELECT * ", f", sequence) SELECT *, ({_HEAD}) ", 1)
     leading = ", ".join(f"i{place} AS ({text})" for place, text in enumerate(first))
     return sa.text(f"WITH {leading} {last}" if first else last)
 
@@ -66,23 +73,31 @@ def insert(
     insert_all(connection, Rows(table, rows, conflict))
 
 
-def insert_all(connection: Connection, *several: Rows) -> None:
+def insert_all(connection: Connection, *rows: Rows) -> None:
     """Insert into several tables, in order; on PostgreSQL by one statement.
 
     What has no rows is left out (an empty array would have no type); with none at all nothing is sent.
     """
-    filled = [each for each in several if each.rows]
+    filled = [each for each in rows if each.rows]
     if not filled:
         return
     if connection.dialect.name == "postgresql":
-        shape = tuple((each.table, each.columns, each.conflict) for each in filled)
-        arrays = {
-            f"{name}_{place}": [row[name] for row in each.rows]
-            for place, each in enumerate(filled)
-            for name in each.columns
-        }
-        connection.execute(_unnest(shape), arrays)
+        several.run(connection, asked(filled))
         return
     for each in filled:
         statement = _values(each.table, each.columns, each.conflict)
         connection.execute(statement, [dict(row) for row in each.rows])
+
+
+def asked(filled: Sequence[Rows], stream: str | None = None) -> Asked:
+    """The one statement for PostgreSQL; with `stream`, the last table's column `sequence` is taken from
+    the head of that journal."""
+    shape = tuple((each.table, each.columns, each.conflict) for each in filled)
+    arrays = {
+        f"{name}_{place}": [row[name] for row in each.rows]
+        for place, each in enumerate(filled)
+        for name in each.columns
+    }
+    if stream is None:
+        return Asked(_unnest(shape), arrays)
+    return Asked(_unnest(shape, sequenced=True), {**arrays, "stream": stream})

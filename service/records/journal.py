@@ -17,7 +17,9 @@ import rfc8785
 import sqlalchemy as sa
 from sqlalchemy.engine import Connection
 
+from service.records import several
 from service.records.engine import digest_of
+from service.records.several import Asked
 from service.records.tables import JournalHead, JournalLine
 
 SERVICE = "_service"
@@ -127,6 +129,16 @@ def _parts(values: dict[str, Any]) -> tuple[str, str, str]:
     return first, second, f',"subject":{subject}}}'
 
 
+_APPEND = sa.text("SELECT journal_append(:depot, CAST(:lines AS jsonb))")
+
+
+def asked(depot: str, entries: Sequence[Entry], actor: dict[str, Any], now: datetime) -> Asked:
+    """The one statement that appends on PostgreSQL; it gives the sequence of the last line."""
+    rows = [_values(depot, entry, actor, instant_text(now)) for entry in entries]
+    lines = [dict(row, parts=_parts(row)) for row in rows]
+    return Asked(_APPEND, {"depot": depot, "lines": json.dumps(lines)})
+
+
 def append(
     connection: Connection, depot: str, entries: Sequence[Entry], actor: dict[str, Any], now: datetime
 ) -> int:
@@ -135,17 +147,11 @@ def append(
     On PostgreSQL one statement takes the head, hashes and inserts; on SQLite the write lock is
     already held.
     """
-    recorded_at = instant_text(now)
-    rows = [_values(depot, entry, actor, recorded_at) for entry in entries]
     if connection.dialect.name == "postgresql":
-        lines = [dict(row, parts=_parts(row)) for row in rows]
-        found = connection.execute(
-            sa.text("SELECT journal_append(:depot, CAST(:lines AS jsonb))"),
-            {"depot": depot, "lines": json.dumps(lines)},
-        ).scalar_one()
-        return int(found)
+        return int(several.run(connection, asked(depot, entries, actor, now))[0][0][0])
     head = connection.execute(sa.select(_head.c.sequence, _head.c.digest).where(_head.c.depot == depot)).one()
     sequence, digest = head
+    rows = [_values(depot, entry, actor, instant_text(now)) for entry in entries]
     for row in rows:
         sequence += 1
         first, second, third = _parts(row)

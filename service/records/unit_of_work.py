@@ -17,7 +17,8 @@ import sqlalchemy as sa
 from sqlalchemy.engine import Connection, Row
 
 from service.errors import NotFoundError
-from service.records import journal
+from service.records import bulk, journal, several
+from service.records.bulk import Rows
 from service.records.engine import Database
 from service.records.tables import Depot, Section
 
@@ -69,6 +70,26 @@ class Transaction:
             .with_for_update()
         )
         return {row.section: row.version for row in rows}
+
+    def write(
+        self, depot: str, rows: Sequence[Rows], entries: Sequence[journal.Entry], projected: Rows
+    ) -> int:
+        """Insert rows, append entries, and upsert what is projected with the sequence of the last line.
+
+        At least one entry. On PostgreSQL all of it is one round trip. Returns the sequence.
+        """
+        filled = [each for each in rows if each.rows]
+        if self.connection.dialect.name != "postgresql":
+            bulk.insert_all(self.connection, *filled)
+            sequence = self.append(depot, entries)
+            sequenced = [{**row, "sequence": sequence} for row in projected.rows]
+            bulk.insert(self.connection, projected.table, sequenced, projected.conflict)
+            return sequence
+        first = [bulk.asked(filled)] if filled else []
+        last = [bulk.asked([projected], stream=depot)] if projected.rows else []
+        line = journal.asked(depot, entries, self.actor.as_json(), self.now)
+        results = several.run(self.connection, *first, line, *last)
+        return int(results[len(first)][0][0])
 
     def append(self, depot: str, entries: Sequence[journal.Entry]) -> int:
         """Take the journal head and append; the sequence of the last line. Last lock of all."""
