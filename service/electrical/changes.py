@@ -76,6 +76,11 @@ def clear_case(circuit: AnyCircuit, spread: Spread) -> AnyCircuit:
     PlainCircuit
         Of the same class.
 
+    Raises
+    ------
+    NonPhysicalError
+        Path `("coil_c",)`: a coil temperature for an AC relay.
+
     Examples
     --------
     >>> from service.electrical.circuit import Feed, Line, operating_point
@@ -105,6 +110,11 @@ def occupied_case(circuit: AnyCircuit, spread: Spread) -> AnyCircuit:
     -------
     PlainCircuit
         Of the same class.
+
+    Raises
+    ------
+    NonPhysicalError
+        Path `("coil_c",)`: a coil temperature for an AC relay.
 
     Examples
     --------
@@ -199,9 +209,11 @@ def _moved(circuit: AnyCircuit, spread: Spread, supply: int, impedance: int) -> 
     moved = with_supply(circuit, spread.supply[supply], local_follows=spread.local_follows)
     feed_ohm = np.asarray(circuit.feed.series_ohm) * spread.feed_ohm[impedance]
     loop = np.asarray(circuit.line.loop_ohm_per_km) * spread.loop_ohm[impedance]
-    relay = (
-        moved.relay if spread.coil_c is None else at_coil_temperature(moved.relay, spread.coil_c[impedance])
-    )
+    relay = moved.relay
+    if spread.coil_c is not None:
+        if np.any(np.asarray(circuit.frequency_hz) != 0):
+            raise NonPhysicalError(("coil_c",), "only a DC relay's voltages follow its coil's temperature")
+        relay = at_coil_temperature(relay, spread.coil_c[impedance])
     moved = replace(moved, line=replace(moved.line, loop_ohm_per_km=loop), relay=_typed(relay, spread))
     return with_feed_ohm(moved, feed_ohm)
 

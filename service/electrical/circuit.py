@@ -131,8 +131,14 @@ class EquippedCircuit(PlainCircuit):
     def __post_init__(self) -> None:
         """Refuse what no real circuit has."""
         PlainCircuit.__post_init__(self)
-        for end, zone_m in enumerate(self.tuned_zone_m):
-            not_negative(("tuned_zone_m", end), zone_m)
+        if np.any(np.asarray(self.frequency_hz) == 0):
+            for end in ("feed_end", "relay_end"):
+                for at, element in enumerate(getattr(self, end)):
+                    two = element.two_port
+                    if any(np.any(np.imag(part) != 0) for part in (two.a, two.b, two.c, two.d)):
+                        raise NonPhysicalError((end, at), f"there is no reactance at 0 Hz: {element.name}")
+        for at, zone_m in enumerate(self.tuned_zone_m):
+            not_negative(("tuned_zone_m", at), zone_m)
         if np.any(sum(self.tuned_zone_m) >= np.asarray(self.line.length_m)):
             raise NonPhysicalError(("tuned_zone_m",), "the tuned zones leave nothing of the line")
 

@@ -30,7 +30,7 @@ from service.electrical.presets import (
 from service.electrical.relay import Relay
 from service.electrical.shunt import shunt_limits
 from service.errors import NoAnswerError, NonPhysicalError
-from support.electrical import uk, vane
+from support.electrical import ac, uk, vane
 
 RAILS = Line(1500.0, 0.45 + 0.6j, 8.0)
 FEED_END, RELAY_END = RailEnd(20.0, 1.0), RailEnd(13.0, 0.05)
@@ -200,6 +200,19 @@ def test_worst_cases_of_a_vane_relay_leave_its_coil_alone() -> None:
     occupied = occupied_case(circuit, replace(SPREAD, coil_c=None))
     assert complex(occupied.relay.impedance_ohm) == complex(circuit.relay.impedance_ohm)
     assert complex(occupied.relay.local_v) == pytest.approx(complex(circuit.relay.local_v) * 1.1)
+
+
+def test_a_coil_temperature_is_for_dc_relays() -> None:
+    for case in (clear_case, occupied_case):
+        with pytest.raises(NonPhysicalError) as caught:
+            case(ac(), SPREAD)
+        assert caught.value.field == ("coil_c",)
+
+
+def test_there_is_no_reactance_at_0_hz_in_equipment_either() -> None:
+    with pytest.raises(NonPhysicalError) as caught:
+        replace(double_rail(PLAIN_BOND), frequency_hz=0.0, line=uk().line, relay=uk().relay)
+    assert caught.value.field == ("feed_end", 2)
 
 
 @pytest.mark.parametrize(
