@@ -4,12 +4,9 @@ from __future__ import annotations
 
 import json
 import os
-import signal
-import socket
 import sqlite3
 import subprocess
 import sys
-import time
 from collections.abc import Callable, Iterator
 from contextlib import closing
 from datetime import UTC, datetime, timedelta
@@ -34,9 +31,9 @@ from service.settings import Settings
 from support import postgres
 from support.api import ACTOR, TERMS
 from support.house import ROOT
+from support.process import serving
 
 Run = Callable[..., tuple[int, str, str]]
-SHUNTBOOK = Path(sys.executable).parent / "shuntbook"
 
 
 @pytest.fixture
@@ -272,55 +269,21 @@ class TestOnSqlite:
             "On SQLite `shuntbook serve` does this itself; a worker needs PostgreSQL.\n",
         )
 
-    def test_a_file_is_served_once(self, run: Run, database_url: str, free_port: int) -> None:
-        with serving(database_url, free_port):
+    def test_a_file_is_served_once(self, run: Run, database_url: str) -> None:
+        with serving(database_url):
             code, _, err = run("serve", "--port", "0")
             assert code == 1
             assert "Another process serves" in err
             assert run("keys", "list")[0] == 0
-        with serving(database_url, free_port):
-            assert httpx.get(f"http://127.0.0.1:{free_port}/health/ready").status_code == 200
-
-
-@pytest.fixture
-def free_port() -> int:
-    with socket.create_server(("127.0.0.1", 0)) as listener:
-        return int(listener.getsockname()[1])
-
-
-class serving:  # noqa: N801, used as a function
-    """A real `shuntbook serve` for the length of a block; it must answer, and stop when told to."""
-
-    def __init__(self, url: str, port: int, *more: str) -> None:
-        self.port = port
-        environment = os.environ | {"SHUNTBOOK_DATABASE_URL": url}
-        command = [SHUNTBOOK, "serve", "--port", str(port), *more]
-        self.process = subprocess.Popen(command, env=environment, stderr=subprocess.PIPE, text=True)
-
-    def __enter__(self) -> subprocess.Popen[str]:
-        deadline = time.monotonic() + 30
-        while time.monotonic() < deadline and self.process.poll() is None:
-            try:
-                httpx.get(f"http://127.0.0.1:{self.port}/health/live")
-            except httpx.TransportError:
-                time.sleep(0.05)
-            else:
-                return self.process
-        self.process.kill()
-        raise AssertionError(self.process.communicate()[1])
-
-    def __exit__(self, *_: object) -> None:
-        self.process.send_signal(signal.SIGTERM)
-        _, err = self.process.communicate(timeout=30)
-        assert "Traceback" not in err
-        assert all(json.loads(line) for line in err.splitlines())
+        with serving(database_url) as served:
+            assert httpx.get(f"{served.base_url}/health/ready").status_code == 200
 
 
 @pytest.mark.postgres
-def test_several_processes_serve_one_server(postgres_url: str, free_port: int) -> None:
-    with serving(postgres_url, free_port, "--workers", "2"):
+def test_several_processes_serve_one_server(postgres_url: str) -> None:
+    with serving(postgres_url, "--workers", "2") as served:
         for _ in range(10):
-            assert httpx.get(f"http://127.0.0.1:{free_port}/health/ready").status_code == 200
+            assert httpx.get(f"{served.base_url}/health/ready").status_code == 200
 
 
 @pytest.mark.postgres
