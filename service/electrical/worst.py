@@ -93,17 +93,20 @@ class Condition:
         down = self.excess <= 0
         a = np.where(down, 1.0, self.excess)
         b, turn = self._middle(seen_ohm), self._middle(slope)
-        c = np.real(seen_ohm * np.conj(seen_ohm))
+        c = _inner(seen_ohm, seen_ohm)
         root = np.sqrt(b * b + 4 * a * c)
-        ohm = np.where(b > 0, 2 * c / np.where(b > 0, b + root, 1.0), (root - b) / (2 * a))
-        rise = 2 * np.real(np.conj(seen_ohm) * slope) - turn * ohm
+        ohm = (root - b) / (2 * a)
+        if self.steer.any():
+            # Where b is positive the difference above would lose digits.
+            ohm = np.where(b > 0, 2 * c / np.where(b > 0, b + root, 1.0), ohm)
+        rise = 2 * _inner(seen_ohm, slope) - turn * ohm
         rise = np.divide(rise, np.sqrt(c) + ohm, out=np.zeros_like(rise), where=c > 0)
         return np.where(down, np.inf, ohm), np.where(down, 0.0, rise)
 
     def between(self, seen_ohm: Numbers) -> tuple[Reals, Reals]:
         """Both positive roots where a is negative, or zero twice where there are none."""
         b = self._middle(seen_ohm)
-        c = np.real(seen_ohm * np.conj(seen_ohm))
+        c = _inner(seen_ohm, seen_ohm)
         under = b * b + 4 * self.excess * c
         lifts = (self.excess < 0) & (b > 0) & (under > 0)
         root = np.sqrt(np.where(lifts, under, 0.0))
@@ -119,8 +122,13 @@ class Condition:
         real: Reals = np.real(ohm)
         if not self.steer.any():
             return -2 * real
-        turned: Reals = np.real(self.steer * np.conj(ohm))
-        return turned - 2 * real
+        return _inner(self.steer, ohm) - 2 * real
+
+
+def _inner(one: Numbers, other: Numbers) -> Reals:
+    """Re(a b*), without the imaginary part that nobody asks for."""
+    real: Reals = one.real * other.real
+    return real + one.imag * other.imag if np.iscomplexobj(one) else real
 
 
 @dataclass(frozen=True, slots=True)
