@@ -7,10 +7,11 @@ a clock of their own.
 from __future__ import annotations
 
 import os
-from collections.abc import AsyncIterator, Callable
-from contextlib import ExitStack, asynccontextmanager
+from collections.abc import AsyncIterator, Callable, Iterator
+from contextlib import asynccontextmanager, contextmanager
 from datetime import UTC, datetime
 from importlib.metadata import version
+from pathlib import Path
 from typing import Any
 
 import anyio.to_thread
@@ -117,12 +118,7 @@ def serve(settings: Settings, *, host: str, port: int, workers: int) -> None:
     import uvicorn
 
     require_migrated(settings)
-    with ExitStack() as held:
-        if path is not None:
-            try:
-                held.enter_context(FileLock(path.with_name(f"{path.name}.lock"), timeout=0))
-            except Timeout:
-                raise ConflictError(f"Another process serves {path}.") from None
+    with alone_on(path):
         options: dict[str, Any] = {"host": host, "port": port, "log_config": None, "access_log": False}
         options["server_header"] = False
         options["timeout_graceful_shutdown"] = STOPS_WITHIN_S
@@ -131,6 +127,30 @@ def serve(settings: Settings, *, host: str, port: int, workers: int) -> None:
             uvicorn.run(create_app(settings), **options)
         else:
             uvicorn.run("service.app:app_from_environment", factory=True, workers=workers, **options)
+
+
+@contextmanager
+def alone_on(path: Path | None) -> Iterator[None]:
+    """Hold the lock of a SQLite file for as long as this process serves or migrates it; None needs none.
+
+    Raises
+    ------
+    ConflictError
+        If another process holds it.
+    StorageFaultError
+        If the folder is not there.
+    """
+    if path is None:
+        yield
+        return
+    if not path.absolute().parent.is_dir():
+        raise StorageFaultError(f"There is no folder {path.parent}.")
+    try:
+        lock = FileLock(path.with_name(f"{path.name}.lock"), timeout=0).acquire()
+    except Timeout:
+        raise ConflictError(f"Another process serves {path}.") from None
+    with lock:
+        yield
 
 
 def require_migrated(settings: Settings) -> None:

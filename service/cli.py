@@ -96,16 +96,24 @@ def _build_demo(directory: Path, settings: Settings) -> None:
 
 @cli.command()
 def migrate() -> None:
-    """Bring the database to this version's tables."""
+    """Bring the database to this version's tables, and draft the limit books that come with it."""
+    from service.app import alone_on
+    from service.application import editions
     from service.jobs.worker import create_tables
     from service.records import migrations
     from service.records.engine import sqlite_path
 
     url = _settings().database_url
-    migrations.upgrade(url)
-    if sqlite_path(url) is None:
+    path = sqlite_path(url)
+    with alone_on(path):
+        migrations.upgrade(url)
+        with _running() as service, service.unit_of_work(Actor("migrate", "shuntbook")) as tx:
+            drafted = editions.load_bundled(tx)
+    if path is None:
         create_tables(url)
     print(f"migrated to {migrations.newest()}")
+    for book, edition in drafted:
+        print(f"drafted {book} {edition}: your own people check it before they issue it")
 
 
 @cli.command()

@@ -20,7 +20,7 @@ from sqlalchemy import make_url
 
 from service import cli
 from service.app import make_service
-from service.application import access, depots, sections, visits
+from service.application import access, books, depots, sections, visits
 from service.application.context import Service
 from service.application.section_content import Content
 from service.application.visit_content import Draft, ReadingDraft
@@ -80,9 +80,18 @@ def visited(service: Service) -> Service:
     return service
 
 
-def test_migrate_says_to_what_and_may_be_repeated(run: Run) -> None:
-    for _ in range(2):
-        assert run("migrate") == (0, f"migrated to {migrations.newest()}\n", "")
+def test_migrate_says_what_it_did_and_may_be_repeated(run: Run, service: Service) -> None:
+    code, out, err = run("migrate")
+    assert (code, err) == (0, "")
+    assert out.startswith(f"migrated to {migrations.newest()}\ndrafted ")
+    with service.read() as connection:
+        names = {
+            (book.book, one.edition)
+            for book in books.page(connection, after=None, most=9)
+            for one in book.editions
+        }
+        assert len(names) == out.count("drafted ")
+    assert run("migrate") == (0, f"migrated to {migrations.newest()}\n", "")
 
 
 @pytest.mark.postgres
@@ -248,6 +257,8 @@ class TestOnSqlite:
     def test_commands_on_what_is_not_there(
         self, run: Run, tmp_path: Path, monkeypatch: pytest.MonkeyPatch
     ) -> None:
+        monkeypatch.setenv("SHUNTBOOK_DATABASE_URL", f"sqlite:///{tmp_path / 'no' / 'folder.db'}")
+        assert run("migrate")[::2] == (1, f"There is no folder {tmp_path / 'no'}.\n")
         monkeypatch.setenv("SHUNTBOOK_DATABASE_URL", f"sqlite:///{tmp_path / 'none.db'}")
         for command in (["serve"], ["backup", str(tmp_path / "copy.db")]):
             code, _, err = run(*command)
@@ -274,6 +285,7 @@ class TestOnSqlite:
             code, _, err = run("serve", "--port", "0")
             assert code == 1
             assert "Another process serves" in err
+            assert run("migrate")[::2] == (1, err)
             assert run("keys", "list")[0] == 0
         with serving(database_url) as served:
             assert httpx.get(f"{served.base_url}/health/ready").status_code == 200
