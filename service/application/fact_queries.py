@@ -63,7 +63,7 @@ class Moment:
 
 @dataclass(frozen=True, slots=True)
 class Found:
-    """What was read, by section: visits oldest first, readings in no order."""
+    """What was read, by section: every visit, after the day judged too; readings up to it, in no order."""
 
     visits: Mapping[str, list[rules.Visit]]
     readings: Mapping[str, list[rules.Reading]]
@@ -97,11 +97,7 @@ def _statements(dialect: str, *, as_known: bool) -> _Statements:
         return sa.and_(table.c.depot == depot, among(table.c.section, "names", dialect))
 
     versions = sa.select(_version).where(of_sections(_version))
-    visits = (
-        sa.select(*VISIT_COLUMNS)
-        .select_from(WITH_VOID)
-        .where(of_sections(_visit), _visit.c.visited_at < ends)
-    )
+    visits = sa.select(*VISIT_COLUMNS).select_from(WITH_VOID).where(of_sections(_visit))
     every = sa.select(*READING_COLUMNS).where(of_sections(_reading), _reading.c.visited_at < ends)
     concessions = sa.select(_concession).where(of_sections(_concession))
     if as_known:
@@ -163,7 +159,7 @@ def ask(
         readings = Asked(statements.newest_readings, {**timed, "historic": list(history)})
     else:
         readings = Asked(statements.every_reading, timed)
-    return Asked(statements.visits, timed), readings, Asked(statements.concessions, values)
+    return Asked(statements.visits, values), readings, Asked(statements.concessions, values)
 
 
 def found(moment: Moment, rows: Sequence[Sequence[tuple[Any, ...]]]) -> Found | None:

@@ -24,6 +24,7 @@ from service.records import several
 from service.records.tables import CalibrationRow, InstrumentRow, Section
 from service.rules import facts as rules
 from service.rules.limits import Edition
+from service.rules.readings import counting
 
 __all__ = ["Gathered", "Moment", "Register", "assemble", "gather", "instruments_of", "register"]
 
@@ -111,11 +112,12 @@ def assemble(
         if row is None:
             continue
         rows = known.versions[name]
-        later = [version.valid_from_on for version in rows if version.valid_from_on > moment.as_of]
+        visits, later = _up_to(moment.as_of, found.visits.get(name, ()))
+        later += [version.valid_from_on for version in rows if version.valid_from_on > moment.as_of]
         yield Gathered(
             rules.SectionFacts(
                 record=section_records.record(row, returned_on(rows, moment.as_of), polarities.get(name, {})),
-                visits=tuple(found.visits.get(name, ())),
+                visits=tuple(visits),
                 readings=tuple(found.readings.get(name, ())),
                 instruments=known.instruments,
                 concessions=tuple(found.concessions.get(name, ())),
@@ -125,6 +127,18 @@ def assemble(
             known.editions.get(row.book, ()) if row.book is not None else (),
             tuple(rows),
         )
+
+
+def _up_to(day: date, visits: Sequence[rules.Visit]) -> tuple[Sequence[rules.Visit], list[date]]:
+    """The visits up to a day; and the days of those that count later, on which the status may change.
+
+    A correction takes back what it replaces on every day, whenever it says that it was made.
+    """
+    if all(visit.visited_on <= day for visit in visits):
+        return visits, []
+    counted = counting(visits)
+    later = [visit.visited_on for visit in counted if visit.visited_on > day]
+    return [visit for visit in counted if visit.visited_on <= day], later
 
 
 def _polarities(
@@ -157,7 +171,11 @@ def _polarities(
 def instruments_of(
     connection: Connection, moment: Moment, names: Sequence[str] | None
 ) -> dict[str, rules.Instrument]:
-    """Instruments with their calibrations in order of date; all of the depot's for None."""
+    """Instruments with their calibrations in order of date; all of the depot's for None.
+
+    The record keeps when an instrument was last changed, not when it was first known: at an earlier
+    instant it is taken as known only with a calibration that was.
+    """
     if names is not None and not names:
         return {}
     joined = _instrument.outerjoin(
@@ -167,7 +185,11 @@ def instruments_of(
         ),
     )
     query = (
-        sa.select(_instrument.c.instrument.label("name"), _calibration)
+        sa.select(
+            _instrument.c.instrument.label("name"),
+            _instrument.c.recorded_at.label("changed_at"),
+            _calibration,
+        )
         .select_from(joined)
         .where(_instrument.c.depot == moment.depot)
         .order_by(_instrument.c.instrument, _calibration.c.calibrated_on)
@@ -176,8 +198,12 @@ def instruments_of(
         query = query.where(_instrument.c.instrument.in_(names))
     calibrations: dict[str, list[rules.Calibration]] = defaultdict(list)
     for row in connection.execute(query):
-        known = calibrations[row.name]
-        if row.calibrated_on is None or (moment.known_at is not None and row.recorded_at > moment.known_at):
-            continue
-        known.append(calibration_of(row))
-    return {name: rules.Instrument(name, tuple(found)) for name, found in calibrations.items()}
+        known = row.calibrated_on is not None
+        if moment.known_at is not None:
+            known = known and row.recorded_at <= moment.known_at
+            if not known and row.changed_at > moment.known_at:
+                continue
+        found = calibrations[row.name]
+        if known:
+            found.append(calibration_of(row))
+    return {name: rules.Instrument(name, tuple(several_)) for name, several_ in calibrations.items()}

@@ -45,7 +45,7 @@ def cautions(
         yield Caution("clock_offset", f"The device's clock differs by {clock_offset_s} s from the server's.")
     yield from _reading_cautions(item, found, status)
     yield from _task_cautions(item, status)
-    if any(visit.visited_at > item.rule.visited_at for visit in found.visits):
+    if any(visit.visited_at > item.rule.visited_at for visit in readings.counting(found.visits)):
         yield Caution(
             "newer_visit", "A newer visit of this section is stored and decides where both measured."
         )

@@ -91,13 +91,12 @@ def _replacing(read: Read, accepted: Sequence[Accepted]) -> list[str]:
 
 
 def _with_accepted(read: Read, accepted: Sequence[Accepted]) -> Found:
-    """What was read, with the visits just taken; without those ahead of the depot's midnight."""
+    """What was read, with the visits just taken."""
     visits = {section: list(several) for section, several in read.found.visits.items()}
     readings = {section: list(several) for section, several in read.found.readings.items()}
     for item in accepted:
-        if item.rule.visited_on <= read.moment.as_of:
-            visits.setdefault(item.draft.section, []).append(item.rule)
-            readings.setdefault(item.draft.section, []).extend(item.readings)
+        visits.setdefault(item.draft.section, []).append(item.rule)
+        readings.setdefault(item.draft.section, []).extend(item.readings)
     return Found(visits, readings, read.found.concessions)
 
 
