@@ -30,6 +30,11 @@ PathName = Annotated[str, Path(pattern=NAME_PATTERN)]
 PathId = Annotated[str, Path(pattern=r"^[0-9a-f]{8}(-[0-9a-f]{4}){3}-[0-9a-f]{12}$")]
 """A UUID in the path, in lower case as this service writes them."""
 
+QueryFormat = Annotated[
+    str | None, Query(alias="format", pattern="^[a-z]{1,10}$", description="Wins over Accept.")
+]
+"""The format to answer in, as `answers.chosen` takes it."""
+
 QueryText = Annotated[Line, Query()]
 """A text to filter by."""
 

@@ -6,14 +6,14 @@ What an audit finds is decided in `application.audits`; how a list is laid out, 
 from __future__ import annotations
 
 from datetime import date
-from typing import Annotated, Literal
+from typing import Annotated
 
-from fastapi import APIRouter, Depends, HTTPException, Path, Query, Request
+from fastapi import APIRouter, Depends, HTTPException, Path, Request
 from starlette.responses import Response
 
 from service.api import conditional
 from service.api.answers import JSON, answer, chosen, file
-from service.api.deps import Caller, PathName, body_of, needs, service_of
+from service.api.deps import Caller, PathName, QueryFormat, body_of, needs, service_of
 from service.api.paging import Page, Paging, link, paging
 from service.api.schemas.audits import AuditAnswer, AuditSent, WeeklyListAnswer
 from service.application import audits
@@ -104,7 +104,7 @@ def get_weekly_list(
     request: Request,
     depot: PathName,
     audit: Which,
-    named: Annotated[Literal["json", "csv", "xlsx", "html"] | None, Query(alias="format")] = None,
+    named: QueryFormat = None,
 ) -> Response:
     """The weekly list of one audit, as it was found then: JSON, CSV, a workbook, or a page to print."""
     service = service_of(request)

@@ -14,7 +14,7 @@ from starlette.responses import Response
 from service.api import conditional
 from service.api.answers import JSON, NDJSON, chosen
 from service.api.bounds import PAGE_SIZE
-from service.api.deps import PathName, QueryText, needs, service_of
+from service.api.deps import PathName, QueryFormat, QueryText, needs, service_of
 from service.api.paging import Page, link
 from service.api.schemas.base import NAME_PATTERN
 from service.api.schemas.journal import LineAnswer
@@ -39,11 +39,11 @@ def follow_journal(
     subject_kind: QueryText | None = None,
     section: Annotated[str | None, Query(pattern=NAME_PATTERN)] = None,
     page_size: Annotated[int, Query(ge=1, le=PAGE_SIZE, description="Lines on a page.")] = 100,
-    format: Annotated[str | None, Query(pattern="^[a-z]{1,10}$")] = None,  # noqa: A002
+    named: QueryFormat = None,
 ) -> Response:
     """Lines after `after`, in commit order; 409 `feed-diverged` if the journal does not hold that line."""
     service = service_of(request)
-    wanted = chosen(request, format, _FORMATS)
+    wanted = chosen(request, named, _FORMATS)
     with service.read(snapshot=True) as connection:  # lines are streamed, which needs a transaction
         fresh = conditional.under_depot(request, connection, depot, service.clock())
         if fresh.not_modified is not None:

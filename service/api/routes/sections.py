@@ -6,7 +6,7 @@ Their statuses, limits and visits have routes of their own.
 from __future__ import annotations
 
 from datetime import date
-from typing import Annotated, Literal
+from typing import Annotated
 
 from fastapi import APIRouter, Depends, Query, Request
 from starlette.responses import Response
@@ -14,7 +14,7 @@ from starlette.responses import Response
 from service.api import bounds, conditional, section_files
 from service.api.answers import JSON, answer, chosen, file
 from service.api.bodies import Raw, RawBody
-from service.api.deps import Caller, PathName, QueryText, body_of, needs, service_of
+from service.api.deps import Caller, PathName, QueryFormat, QueryText, body_of, needs, service_of
 from service.api.paging import Page, Paging, link, paging
 from service.api.schemas.sections import (
     ImportAnswer,
@@ -68,11 +68,11 @@ def list_sections(
     depot: PathName,
     wanted: Annotated[Filters, Depends(filters)],
     paged: Annotated[Paging, Depends(paging)],
-    format: Annotated[Literal["json", "csv"] | None, Query()] = None,  # noqa: A002
+    named: QueryFormat = None,
 ) -> Response:
     """Sections in order of name, each with its status in short; as CSV, all of them in one file."""
     service = service_of(request)
-    form = chosen(request, format, FORMATS)
+    form = chosen(request, named, FORMATS)
     with service.read() as connection:
         fresh = conditional.under_depot(request, connection, depot, service.clock())
     if fresh.not_modified is not None:
