@@ -9,7 +9,7 @@ import re
 from collections.abc import Iterator, Mapping
 from dataclasses import dataclass
 from datetime import datetime, timedelta
-from operator import itemgetter
+from operator import attrgetter, itemgetter
 from typing import Any
 
 from service.errors import Fault
@@ -38,6 +38,11 @@ class ReadingDraft:
     instrument: str | None = None
     shunt_ohm: float | None = None
     source: str | None = None
+
+
+def whole(value: float) -> float:
+    """A whole number as an integer, as JSON (RFC 8785) writes it: 700 for 700.0."""
+    return int(value) if value.is_integer() and abs(value) < 2**53 else value
 
 
 @dataclass(frozen=True, slots=True)
@@ -117,7 +122,11 @@ def digest(draft: Draft) -> str:
 
 
 def wire(draft: Draft) -> dict[str, Any]:
-    """The members a visit was posted with, as its answers echo them."""
+    """The members a visit was posted with, as answers and the journal echo them.
+
+    Readings and work stand in an order of their own: theirs as sent says nothing and is not kept.
+    """
+    readings = sorted(draft.readings, key=attrgetter("quantity", "test_point", "stage"))
     return {
         "visit": draft.visit,
         "section": draft.section,
@@ -126,12 +135,12 @@ def wire(draft: Draft) -> dict[str, Any]:
         "tester": draft.tester,
         "conditions": {name: getattr(draft, name) for name in _CONDITIONS},
         "tasks": [{"task": t.task, "done": t.done, "reason": t.reason} for t in draft.tasks],
-        "work_done": list(draft.work_done),
+        "work_done": sorted(draft.work_done),
         "condition_left": draft.condition_left,
         "remarks": draft.remarks,
         "replaces": draft.replaces,
         "pack": draft.pack,
-        "readings": [{name: getattr(reading, name) for name in _READING} for reading in draft.readings],
+        "readings": [{name: getattr(reading, name) for name in _READING} for reading in readings],
     }
 
 

@@ -16,7 +16,7 @@ from sqlalchemy.engine import Connection, Row
 
 from service.application import visit_content
 from service.application.fact_rows import VISIT_COLUMNS, WITH_VOID, visit_of
-from service.application.visit_content import Draft, ReadingDraft, TaskDraft
+from service.application.visit_content import Draft, ReadingDraft, TaskDraft, whole
 from service.errors import NotFoundError
 from service.records import latest
 from service.records.journal import instant_text
@@ -108,10 +108,10 @@ def _wire_rows(
                 row.test_point,
                 row.stage,
                 row.comparison,
-                row.value_given,
+                whole(row.value_given),
                 row.unit_given,
                 row.instrument,
-                row.shunt_ohm,
+                None if row.shunt_ohm is None else whole(row.shunt_ohm),
                 row.source,
             )
         )

@@ -1,13 +1,15 @@
 """Insert many rows, into one table or several, by one statement.
 
-PostgreSQL takes one `INSERT … SELECT unnest(arrays)`, several times faster than a row at a time;
-SQLite, without a network in between, an executemany.
+PostgreSQL takes one `INSERT … SELECT` from the rows as JSON, several times faster than a row at a time
+and, for the rows a visit has, than arrays; SQLite, without a network in between, an executemany.
 """
 
 from __future__ import annotations
 
+import json
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
+from datetime import date
 from functools import lru_cache
 from typing import Any
 
@@ -39,23 +41,24 @@ Shape = tuple[tuple[sa.Table, tuple[str, ...], str], ...]
 
 
 @lru_cache(maxsize=64)
-def _unnest(shape: Shape, *, sequenced: bool = False) -> sa.TextClause:
-    *first, last = (_one_unnest(place, *each) for place, each in enumerate(shape))
+def _from_json(shape: Shape, *, sequenced: bool = False) -> sa.TextClause:
+    *first, last = (_one_insert(place, *each) for place, each in enumerate(shape))
     if sequenced:
         last = last.replace(") SELECT * ", f", sequence) SELECT *, ({_HEAD}) ", 1)
     leading = ", ".join(f"i{place} AS ({text})" for place, text in enumerate(first))
     return sa.text(f"WITH {leading} {last}" if first else last)
 
 
-def _one_unnest(place: int, table: sa.Table, columns: tuple[str, ...], conflict: str) -> str:
+def _one_insert(place: int, table: sa.Table, columns: tuple[str, ...], conflict: str) -> str:
     dialect = postgresql.dialect()  # type: ignore[no-untyped-call]
-    arrays = []
-    for name in columns:
-        bare = table.c[name].type.compile(dialect=dialect).partition(" COLLATE")[0]
-        arrays.append(f"CAST(:{name}_{place} AS {bare}[])")
+    types = {name: table.c[name].type.compile(dialect=dialect).partition(" COLLATE")[0] for name in columns}
+    typed = ", ".join(f"{name} {kind}" for name, kind in types.items())
     names = ", ".join(columns)
     # names of our own tables only; every value is bound
-    return f"INSERT INTO {table.name} ({names}) SELECT * FROM unnest({', '.join(arrays)}) {conflict}"  # noqa: S608
+    return (
+        f"INSERT INTO {table.name} ({names}) SELECT * FROM "  # noqa: S608
+        f"json_to_recordset(CAST(:rows_{place} AS json)) AS r{place}({typed}) {conflict}"
+    )
 
 
 @lru_cache(maxsize=64)
@@ -76,7 +79,7 @@ def insert(
 def insert_all(connection: Connection, *rows: Rows) -> None:
     """Insert into several tables, in order; on PostgreSQL by one statement.
 
-    What has no rows is left out (an empty array would have no type); with none at all nothing is sent.
+    What has no rows is left out (nothing would tell their columns); with none at all nothing is sent.
     """
     filled = [each for each in rows if each.rows]
     if not filled:
@@ -93,11 +96,15 @@ def asked(filled: Sequence[Rows], stream: str | None = None) -> Asked:
     """The one statement for PostgreSQL; with `stream`, the last table's column `sequence` is taken from
     the head of that journal."""
     shape = tuple((each.table, each.columns, each.conflict) for each in filled)
-    arrays = {
-        f"{name}_{place}": [row[name] for row in each.rows]
-        for place, each in enumerate(filled)
-        for name in each.columns
-    }
+    values = {f"rows_{place}": _encode(each.rows) for place, each in enumerate(filled)}
     if stream is None:
-        return Asked(_unnest(shape), arrays)
-    return Asked(_unnest(shape, sequenced=True), {**arrays, "stream": stream})
+        return Asked(_from_json(shape), values)
+    return Asked(_from_json(shape, sequenced=True), {**values, "stream": stream})
+
+
+def _iso(value: date) -> str:
+    """Days and instants, the only values that JSON has no word for."""
+    return value.isoformat()
+
+
+_encode = json.JSONEncoder(ensure_ascii=False, check_circular=False, allow_nan=False, default=_iso).encode

@@ -48,48 +48,19 @@ _encode = json.JSONEncoder(
 ).encode
 
 
+_ODD = re.compile(r"(?:^|[:,\[])-?(?:[0-9]+\.0(?![0-9])|[0-9]+(?:\.[0-9]+)?[eE]|[0-9]{16})|[\ud800-\udfff]")
+"""What the standard encoder may have written otherwise than RFC 8785: a whole float, an exponent, a
+number beyond 2**53; or a surrogate, which has no UTF-8. Inside a string it is a false alarm."""
+
+
 def canonical(value: Any) -> str:
     """RFC 8785 text of a JSON value.
 
-    The standard encoder writes the same text, several times faster, once whole floats are made
-    integers; a number it would write otherwise (with an exponent) is left to the library.
+    The standard encoder writes the same text many times faster, but for a few numbers; where there may
+    be one, the library writes it.
     """
-    try:
-        return _encode(_plain(value))
-    except _ExoticError:
-        return rfc8785.dumps(value).decode()
-
-
-class _ExoticError(Exception):
-    """Something that the standard encoder writes otherwise than RFC 8785."""
-
-
-def _plain(value: Any) -> Any:
-    kind = type(value)
-    if kind is dict:
-        return {key: _plain(member) for key, member in value.items()}
-    if kind is list:
-        return [_plain(member) for member in value]
-    if kind is float:
-        if value.is_integer() and abs(value) < _EXACT:
-            return int(value)
-        if not _FROM <= abs(value) < _BELOW:
-            raise _ExoticError
-    elif kind is int:
-        if not -_EXACT < value < _EXACT:
-            raise _ExoticError
-    elif isinstance(value, str) and not value.isascii() and _SURROGATE.search(value):
-        raise _ExoticError
-    return value
-
-
-_EXACT = 2**53
-"""Integers below it are doubles, exactly."""
-
-_FROM, _BELOW = 1e-4, 1e16
-"""Between them the standard encoder writes a double without an exponent, as RFC 8785 does."""
-
-_SURROGATE = re.compile("[\ud800-\udfff]")
+    text = _encode(value)
+    return rfc8785.dumps(value).decode() if _ODD.search(text) else text
 
 
 def instant_text(instant: datetime) -> str:

@@ -11,7 +11,7 @@ from pydantic import ConfigDict, Field, StringConstraints
 
 from service.api.schemas.base import Answer, Instant, Line, Name, Remarks, Request
 from service.api.schemas.status import SUMMARY, VERDICT, SummaryAnswer, VerdictAnswer
-from service.application.visit_content import Draft, ReadingDraft, TaskDraft
+from service.application.visit_content import Draft, ReadingDraft, TaskDraft, whole
 from service.rules.words import (
     Ballast,
     BallastState,
@@ -129,7 +129,7 @@ class VisitSent(Request):
             ballast=seen.ballast,
             ballast_state=seen.ballast_state,
             rail=seen.rail,
-            air_temperature_c=seen.air_temperature_c,
+            air_temperature_c=None if seen.air_temperature_c is None else whole(seen.air_temperature_c),
             tasks=tuple(TaskDraft(task.task, task.done, task.reason) for task in self.tasks or ()),
             work_done=tuple(self.work_done or ()),
             condition_left=self.condition_left,
@@ -142,10 +142,10 @@ class VisitSent(Request):
                     reading.test_point,
                     reading.stage,
                     reading.comparison or Comparison.EQ,
-                    reading.value,
+                    whole(reading.value),
                     reading.unit,
                     reading.instrument,
-                    reading.shunt_ohm,
+                    None if reading.shunt_ohm is None else whole(reading.shunt_ohm),
                     reading.source,
                 )
                 for reading in self.readings or ()
