@@ -94,7 +94,9 @@ def test_a_concession_shows_outside_until_it_lapses(field: Field) -> None:
     field.store(visit(1, MAY_3, *drops(0.4)))
     field.write(concessions.grant, permission, concessions.Content(**terms))
     now = field.judged().status
-    assert {verdict.concession for verdict in now.verdicts if verdict.quantity == "drop_shunt"} == {permission}
+    assert {verdict.concession for verdict in now.verdicts if verdict.quantity == "drop_shunt"} == {
+        permission
+    }
     assert (now.compliance, now.holds_until) == (Compliance.NO, date(2026, 6, 30))
     field.clock.move(days=16)
     later = field.judged().status
