@@ -8,9 +8,11 @@ from __future__ import annotations
 
 import json
 import re
-from collections.abc import Iterator, Sequence
+from collections.abc import Generator, Iterator, Sequence
+from contextlib import closing, contextmanager
 from dataclasses import dataclass
 from datetime import UTC, datetime
+from functools import partial
 from typing import Any
 
 import rfc8785
@@ -30,6 +32,7 @@ START = "0" * 64
 
 _head = JournalHead.__table__  # type: ignore[attr-defined]
 _line = JournalLine.__table__  # type: ignore[attr-defined]
+_TEXTS = [column.name for column in _line.c if column.name not in ("sequence", "section")]
 
 
 @dataclass(frozen=True, slots=True)
@@ -48,18 +51,21 @@ _encode = json.JSONEncoder(
 ).encode
 
 
-_ODD = re.compile(r"(?:^|[:,\[])-?(?:[0-9]+\.0(?![0-9])|[0-9]+(?:\.[0-9]+)?[eE]|[0-9]{16})|[\ud800-\udfff]")
-"""What the standard encoder may have written otherwise than RFC 8785: a whole float, an exponent, a
-number beyond 2**53; or a surrogate, which has no UTF-8. Inside a string it is a false alarm."""
+_ODD = re.compile(r"[:,\[]-?[0-9]+(?:\.0(?![0-9])|(?:\.[0-9]+)?[eE]|[0-9]{15})")
+"""Numbers that the standard encoder may have written otherwise than RFC 8785: a whole float, one with an
+exponent, one beyond 2**53. Inside a string it is a false alarm."""
 
 
 def canonical(value: Any) -> str:
-    """RFC 8785 text of a JSON value.
+    """RFC 8785 text of a JSON value; a lone surrogate, which has no UTF-8, raises UnicodeError.
 
     The standard encoder writes the same text many times faster, but for a few numbers; where there may
     be one, the library writes it.
     """
+    if isinstance(value, float):
+        return rfc8785.dumps(value).decode()
     text = _encode(value)
+    text.encode()
     return rfc8785.dumps(value).decode() if _ODD.search(text) else text
 
 
@@ -181,22 +187,50 @@ class Break:
 def verify(connection: Connection, depot: str) -> Break | None:
     """Walk a chain from its first line; None if every line fits and the head agrees."""
     expected, digest = 0, START
-    for row in lines(connection, depot):
-        expected += 1
-        if row["sequence"] != expected:
-            return Break(depot, expected, f"line {expected} is missing; line {row['sequence']} follows")
-        if row["previous_digest"] != digest:
-            return Break(depot, expected, "does not hold the digest of the line before")
-        first, second, third = _parts(row)
-        digest = digest_of(f"{first}{digest}{second}{expected}{third}")
-        if row["digest"] != digest:
-            return Break(depot, expected, "its content does not match its digest")
-        only = json.loads(row["sections"])
-        if row["section"] != (only[0] if only is not None and len(only) == 1 else None):
-            return Break(depot, expected, "its section column does not match its sections")
-    if head(connection, depot) != (expected, digest):
-        return Break(depot, expected + 1, "the head names another last line: the tail was cut or changed")
+    with _any_bytes(connection), closing(lines(connection, depot)) as rows:
+        for row in rows:
+            expected += 1
+            if row["sequence"] != expected:
+                return Break(depot, expected, f"line {expected} is missing; line {row['sequence']} follows")
+            reason = _misfit(row, digest)
+            if reason is not None:
+                return Break(depot, expected, reason)
+            digest = row["digest"]
+        query = sa.select(_head.c.sequence, _head.c.digest).where(_head.c.depot == depot)
+        if connection.execute(query).one_or_none() != (expected, digest):
+            reason = "the head is gone or names another last line: the tail was cut or changed"
+            return Break(depot, expected + 1, reason)
     return None
+
+
+def _misfit(row: dict[str, Any], previous: str) -> str | None:
+    """Why a line does not fit after the one whose digest is given."""
+    try:
+        "".join(row[name] for name in _TEXTS).encode()
+    except (TypeError, UnicodeEncodeError):
+        return "holds bytes that are no text"
+    if row["previous_digest"] != previous:
+        return "does not hold the digest of the line before"
+    first, second, third = _parts(row)
+    if row["digest"] != digest_of(f"{first}{previous}{second}{row['sequence']}{third}"):
+        return "its content does not match its digest"
+    only = json.loads(row["sections"])
+    if row["section"] != (only[0] if only is not None and len(only) == 1 else None):
+        return "its section column does not match its sections"
+    return None
+
+
+@contextmanager
+def _any_bytes(connection: Connection) -> Iterator[None]:
+    """Read what is no UTF-8 too: SQLite keeps whatever bytes a column was overwritten with."""
+    raw: Any = connection.connection.dbapi_connection
+    if connection.dialect.name == "sqlite":
+        raw.text_factory = partial(str, encoding="utf-8", errors="surrogateescape")
+    try:
+        yield
+    finally:
+        if connection.dialect.name == "sqlite":
+            raw.text_factory = str
 
 
 def lines(
@@ -207,8 +241,8 @@ def lines(
     most: int | None = None,
     subject_kind: str | None = None,
     section: str | None = None,
-) -> Iterator[dict[str, Any]]:
-    """Lines in order of sequence, as column values, streamed."""
+) -> Generator[dict[str, Any]]:
+    """Lines in order of sequence, as column values, streamed; close it if it is not read to the end."""
     query = sa.select(_line).where(_line.c.depot == depot, _line.c.sequence > after)
     if subject_kind is not None:
         query = query.where(_line.c.subject_kind == subject_kind)
@@ -218,9 +252,9 @@ def lines(
     query = query.order_by(_line.c.sequence)
     if most is not None:
         query = query.limit(most)
-    result = connection.execution_options(yield_per=1000).execute(query)
-    for row in result.mappings():
-        yield dict(row)
+    with connection.execute(query, execution_options={"yield_per": 1000}) as result:
+        for row in result.mappings():
+            yield dict(row)
 
 
 def at(connection: Connection, depot: str, sequence: int) -> str | None:
