@@ -42,6 +42,8 @@ USE_NOTED_EVERY = timedelta(minutes=5)
 
 _key = AccessKey.__table__  # type: ignore[attr-defined]
 
+_BY_DIGEST = sa.select(_key).where(_key.c.digest == sa.bindparam("digest"))  # run for every request
+
 
 @dataclass(frozen=True, slots=True)
 class Key:
@@ -126,8 +128,7 @@ def authenticate(connection: Connection, text: str, now: datetime) -> Key:
     UnknownKeyError
         If there is none, or it has expired or was revoked; the detail says which.
     """
-    found = connection.execute(sa.select(_key).where(_key.c.digest == digest_of(text)))
-    row = found.mappings().one_or_none()
+    row = connection.execute(_BY_DIGEST, {"digest": digest_of(text)}).mappings().one_or_none()
     if row is None:
         raise UnknownKeyError("The access key is not known here.")
     key = _of(row)

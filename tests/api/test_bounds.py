@@ -9,7 +9,9 @@ from urllib.parse import urlsplit
 import pytest
 
 from service.api import bounds
-from support.api import Api
+from service.api.paging import Paging
+from service.application import editions
+from support.api import ACTOR, Api
 
 pytestmark = pytest.mark.parametrize("database_url", ["sqlite"], indirect=True)
 
@@ -39,6 +41,20 @@ def test_every_quantity_is_told_with_its_units(api: Api) -> None:
     assert {"unit": "mOhm", "factor": "0.001"} in items["drop_shunt"]["units"]
     assert items["residual_voltage"]["needs_shunt"]
     assert items["length"]["from_register"]
+
+
+def test_every_task_is_told_with_the_editions_that_name_it(api: Api) -> None:
+    client = api.client("readings")
+    assert client.get("/v1/tasks").json() == {"items": [], "next": None}
+    with api.service.unit_of_work(ACTOR) as tx:
+        loaded = set(editions.load_bundled(tx))
+    items = client.get("/v1/tasks").json()["items"]
+    names = [item["task"] for item in items]
+    assert names == sorted(set(names))
+    assert "shunt_test" in names
+    told = {(one["book"], one["edition"]) for item in items for one in item["editions"]}
+    assert told
+    assert told <= loaded
 
 
 def test_a_body_at_the_bound_is_read_and_one_byte_more_is_not(api: Api) -> None:
@@ -126,8 +142,6 @@ def test_cursors_are_good_for_their_own_list_only(api: Api, subtests: pytest.Sub
 def test_a_cursor_is_bound_to_its_filters(api: Api) -> None:
     api.depot("ash")
     client = api.client("read")
-    from service.api.paging import Paging
-
     made = Paging(1, None, "/v1/depots/ash/findings", (("state", "open"),))
     _, following = made.cut(["a", "b"], lambda row: (row,))
     assert following is not None

@@ -2,12 +2,15 @@
 
 from __future__ import annotations
 
+import asyncio
 from datetime import UTC, datetime
 from typing import Any
 
 import pytest
 
+from service.api import conditional
 from service.application import depots
+from service.errors import PreconditionMissingError, StaleError, UnparsableError
 from service.records import journal
 from support.api import Api
 
@@ -198,3 +201,22 @@ def test_a_new_local_day_is_sent_though_nothing_was_written(api: Api) -> None:
     assert client.get("/v1/depots/harrow", headers=known).status_code == 304
     api.clock.move(seconds=1)
     assert client.get("/v1/depots/harrow", headers=known).status_code == 200
+
+
+def precondition(if_match: str | None, if_none_match: str | None) -> int | None:
+    return asyncio.run(conditional.edits_or_creates(if_match, if_none_match))
+
+
+def test_a_put_edits_a_version_or_creates() -> None:
+    """RFC 9110, 13.1.2: `If-None-Match: *` holds only where there is nothing yet."""
+    assert precondition(None, "*") is None
+    assert precondition('"v3.0af"', None) == 3
+    assert precondition('"v3"', None) == 3
+    with pytest.raises(PreconditionMissingError):
+        precondition(None, None)
+    with pytest.raises(UnparsableError):
+        precondition('"v3"', "*")
+    with pytest.raises(UnparsableError):
+        precondition(None, '"v3"')
+    with pytest.raises(StaleError):
+        precondition('"v"', None)
