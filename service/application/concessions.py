@@ -132,7 +132,7 @@ def grant(tx: Transaction, depot: str, concession: str, content: Content) -> tup
     except sa.exc.IntegrityError as error:
         raise ConflictError("This id was used for another concession.") from error
     granted = get(tx.connection, depot, concession)
-    _judge(tx, row, granted, "concession.granted")
+    _judge(tx, row, granted, "concession_granted")
     return granted, True
 
 
@@ -158,7 +158,7 @@ def end(tx: Transaction, depot: str, concession: str, why: str) -> Concession:
     this = sa.and_(_concession.c.depot == depot, _concession.c.concession == concession)
     tx.connection.execute(sa.update(_concession).where(this).values(ended | {"version": stored.version + 1}))
     kept = get(tx.connection, depot, concession)
-    _judge(tx, row, kept, "concession.ended")
+    _judge(tx, row, kept, "concession_ended")
     return kept
 
 

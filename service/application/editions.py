@@ -63,7 +63,7 @@ def draft(tx: Transaction, new: Draft) -> EditionRecord:
         tx.connection.execute(sa.insert(_edition).values(values))
     except IntegrityError as error:
         raise ConflictError("This book has an edition of that name already.") from error
-    return _told(tx, new.book, new.edition, "edition.drafted", ())
+    return _told(tx, new.book, new.edition, "edition_drafted", ())
 
 
 def edit(tx: Transaction, book: str, edition: str, content: Content, *, expected: int) -> EditionRecord:
@@ -78,7 +78,7 @@ def edit(tx: Transaction, book: str, edition: str, content: Content, *, expected
     if tx.actor.holder not in holders:
         holders.append(tx.actor.holder)
     _update(tx, row, content=text, digest=digest_of(text), drafted_by="\n".join(holders))
-    return _told(tx, book, edition, "edition.edited", ())
+    return _told(tx, book, edition, "edition_edited", ())
 
 
 def issue(tx: Transaction, book: str, edition: str, effective_on: date, *, expected: int) -> EditionRecord:
@@ -112,7 +112,7 @@ def issue(tx: Transaction, book: str, edition: str, effective_on: date, *, expec
         issued_at=tx.now,
         issued_by=tx.actor.holder,
     )
-    return _told(tx, book, edition, "edition.issued", depots)
+    return _told(tx, book, edition, "edition_issued", depots)
 
 
 def withdraw(tx: Transaction, book: str, edition: str, withdrawn_on: date, *, expected: int) -> EditionRecord:
@@ -129,7 +129,7 @@ def withdraw(tx: Transaction, book: str, edition: str, withdrawn_on: date, *, ex
         withdrawn_at=tx.now,
         withdrawn_by=tx.actor.holder,
     )
-    return _told(tx, book, edition, "edition.withdrawn", depots)
+    return _told(tx, book, edition, "edition_withdrawn", depots)
 
 
 def bundled() -> tuple[Draft, ...]:

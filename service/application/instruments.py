@@ -117,7 +117,7 @@ def put(
     _write(tx, kept, stored)
     moved = _measured_with(tx.connection, depot, instrument)
     tx.lock_sections(depot, moved)
-    action = "instrument.created" if stored is None else "instrument.changed"
+    action = "instrument_created" if stored is None else "instrument_changed"
     entry = journal.Entry(action, "instrument", instrument, tuple(moved), kept.document())
     status.rejudge_and_append(tx, row, moved, [entry])
     return kept, stored is None

@@ -131,7 +131,7 @@ def create(tx: Transaction, depot: str, section: str, content: Content) -> Recor
     except sa.exc.IntegrityError as error:
         fault = Fault("name_taken", "names are unique without regard to case and never reused", "/section")
         raise ConflictError("The depot has a section of this name already.", (fault,)) from error
-    return _store(tx, row, section, 1, content, moved, "section.created")
+    return _store(tx, row, section, 1, content, moved, "section_created")
 
 
 def edit(tx: Transaction, depot: str, section: str, version: int, content: Content) -> Recorded:
@@ -160,7 +160,7 @@ def edit(tx: Transaction, depot: str, section: str, version: int, content: Conte
     refuse(section, content, known_to(tx.connection, depot, [content]), stored.content, today)
     newer = sa.update(_section).where(_section.c.depot == depot, _section.c.section == section)
     tx.connection.execute(newer.values(version=version + 1))
-    return _store(tx, row, section, version + 1, content, moved, "section.changed")
+    return _store(tx, row, section, version + 1, content, moved, "section_changed")
 
 
 def _store(

@@ -163,7 +163,7 @@ def _write(tx: Transaction, depot_row: Row[Any], changes: Sequence[_Change], tod
     moved = _moved(tx.connection, depot, changes)
     entries = [
         journal.Entry(
-            "section.created" if one.version == 1 else "section.changed",
+            "section_created" if one.version == 1 else "section_changed",
             "section",
             one.section,
             tuple(sorted({one.section, *moved[one.section]})),

@@ -191,7 +191,7 @@ def test_issuing_tells_every_depot_that_uses_the_book_and_shortens_its_statuses(
     record = shelf.issue(DAY)
     told = lines(shelf, "ashby")[-1]
     assert (told["action"], told["subject_kind"], told["subject_name"]) == (
-        "edition.issued",
+        "edition_issued",
         "edition",
         "house/1",
     )
@@ -212,7 +212,7 @@ def test_every_step_is_in_the_service_journal_and_the_chains_hold(shelf: Shelf) 
     shelf.issue(DAY, expected=2)
     shelf.write(editions.withdraw, "house", "1", date(2026, 6, 1), expected=3)
     actions = [line["action"] for line in lines(shelf, journal.SERVICE)]
-    assert actions == ["edition.drafted", "edition.edited", "edition.issued", "edition.withdrawn"]
+    assert actions == ["edition_drafted", "edition_edited", "edition_issued", "edition_withdrawn"]
     for stream in (journal.SERVICE, "ashby", "birchfield"):
         assert shelf.read(journal.verify, stream) is None
 

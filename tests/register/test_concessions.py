@@ -50,7 +50,7 @@ def test_a_concession_is_granted_once_by_a_second_person(judged: Depot) -> None:
     assert new
     assert (granted.content.approved_by, granted.granted_by) == (ENGINEER.holder, ENGINEER.holder)
     line = lines(judged)[-1]
-    assert (line["action"], line["sections"]) == ("concession.granted", '["A"]')
+    assert (line["action"], line["sections"]) == ("concession_granted", '["A"]')
     assert kept_status(judged, "A").sequence == line["sequence"]
     shown = concession_answer(granted).model_dump(mode="json")
     assert journal.canonical(shown | {"granted_at": journal.instant_text(judged.clock[0])}) == line["content"]
@@ -133,7 +133,7 @@ def test_it_ends_once_and_says_why(judged: Depot) -> None:
         "bonds renewed",
     )
     line = lines(judged)[-1]
-    assert (line["action"], line["sequence"]) == ("concession.ended", kept_status(judged, "A").sequence)
+    assert (line["action"], line["sequence"]) == ("concession_ended", kept_status(judged, "A").sequence)
     judged.later(days=1)
     assert judged.write(concessions.end, ID, "again") == ended
     with pytest.raises(NotFoundError):

@@ -41,7 +41,7 @@ def test_an_instrument_is_read_as_it_was_recorded(depot: Depot) -> None:
     assert depot.read(instruments.get, "SB-22") == made
     assert made.content == content
     line = lines(depot)[-1]
-    assert (line["action"], line["subject_name"], line["sections"]) == ("instrument.created", "SB-22", "[]")
+    assert (line["action"], line["subject_name"], line["sections"]) == ("instrument_created", "SB-22", "[]")
     assert line["content"] == journal.canonical(
         instrument_answer(made).model_dump(mode="json") | {"recorded_at": "2026-03-02T12:00:00.000000Z"}
     )

@@ -48,7 +48,7 @@ def test_recording_is_journalled_as_the_wire_shows_it_and_judged(depot: Depot) -
     made = depot.section("TV114")
     line = lines(depot)[-1]
     assert (line["action"], line["subject_kind"], line["subject_name"]) == (
-        "section.created",
+        "section_created",
         "section",
         "TV114",
     )
