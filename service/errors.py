@@ -109,6 +109,6 @@ class NoAnswerError(ShuntbookError):
     """
 
     def __init__(self, code: str, reason: str) -> None:
-        super().__init__(reason)
+        super().__init__(reason, (Fault(code, reason),))
         self.code = code
         self.reason = reason

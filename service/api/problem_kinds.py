@@ -172,6 +172,13 @@ _KINDS = (
         "clock of the sender.",
     ),
     Kind(
+        "no-answer",
+        422,
+        "The calculation has no answer",
+        "It was asked correctly, but no linear model applies, the circuit is degenerate, or the readings"
+        " cannot tell. The code and reason in errors say which; sending the same again will not help.",
+    ),
+    Kind(
         "precondition-missing",
         428,
         "The edit does not say what it edits",

@@ -35,7 +35,7 @@ _BY_CLASS: dict[type[ShuntbookError], str] = {
     errors.TooLargeError: "too-large",
     errors.NotAcceptableError: "not-acceptable",
     errors.NonPhysicalError: "not-acceptable",
-    errors.NoAnswerError: "not-acceptable",
+    errors.NoAnswerError: "no-answer",
     errors.PreconditionMissingError: "precondition-missing",
     errors.StorageFaultError: "storage-fault",
     errors.UnavailableError: "unavailable",

@@ -7,6 +7,7 @@ the caller, not from visits.
 from __future__ import annotations
 
 import math
+from collections.abc import Iterator
 from dataclasses import dataclass, replace
 
 from service.application.circuit_cases import pointed
@@ -36,9 +37,12 @@ class Readings:
 
 @dataclass(frozen=True, slots=True)
 class Trust:
-    """Relative standard uncertainty of the circuit's own values; None where nothing is said of it."""
+    """Relative standard uncertainty of the circuit's own values; None where nothing is said of it.
 
-    loop: float
+    `fitted` is what an AC circuit is fitted with, the others are for DC.
+    """
+
+    loop: float | None
     feed: float | None
     relay: float | None
     fitted: Doubt | None
@@ -76,9 +80,11 @@ def ballast(circuit: PlainCircuit, readings: Readings, trust: Trust, measured: S
     NoAnswerError
         The readings are ill-conditioned for the question.
     """
-    found = (
-        _dc(circuit, readings, trust) if float(circuit.frequency_hz) == 0 else _ac(circuit, readings, trust)
-    )
+    dc = float(circuit.frequency_hz) == 0
+    faults = tuple(_dc_faults(readings, trust) if dc else _ac_faults(circuit, readings, trust))
+    if faults:
+        raise NotAcceptableError("The ballast cannot be told from what was sent.", faults)
+    found = _dc(circuit, readings, trust) if dc else _ac(circuit, readings, trust)
     if measured is None:
         return found
     with pointed("/drop_shunt"):
@@ -88,8 +94,32 @@ def ballast(circuit: PlainCircuit, readings: Readings, trust: Trust, measured: S
     return replace(found, working_drop_away_v=float(worn))
 
 
+def _dc_faults(readings: Readings, trust: Trust) -> Iterator[Fault]:
+    if trust.loop is None:
+        yield Fault("missing", "how well the rails' impedance is known must be given", "/loop_relative_u")
+    for end, known in (("feed", trust.feed), ("relay", trust.relay)):
+        if known is None and getattr(readings, f"{end}_a") is None:
+            reason = f"needed where the current at the {end} end is not measured"
+            yield Fault("missing", reason, f"/{end}_relative_u")
+    if trust.fitted is not None:
+        yield Fault("not_used", "a DC circuit is not fitted", "/doubt")
+
+
+def _ac_faults(circuit: PlainCircuit, readings: Readings, trust: Trust) -> Iterator[Fault]:
+    if trust.fitted is None:
+        yield Fault("missing", "an AC circuit is fitted, its own values in doubt", "/doubt")
+    if readings.relay_a is not None:
+        yield Fault("not_used", "a fit has no use for this current", "/readings/relay_a")
+    for name in ("loop", "feed", "relay"):
+        if getattr(trust, name) is not None:
+            yield Fault("not_used", "of an AC circuit doubt says this", f"/{name}_relative_u")
+    if not math.isfinite(float(circuit.line.ballast_ohm_km)):
+        yield Fault("missing", "a fit begins at some ballast", "/circuit/line/ballast_ohm_km")
+
+
 def _dc(circuit: PlainCircuit, readings: Readings, trust: Trust) -> Ballast:
     length_m, loop = float(circuit.line.length_m), float(complex(circuit.line.loop_ohm_per_km).real)
+    assert trust.loop is not None
     with pointed("/readings"):
         ends = _both_ends(circuit, readings, trust)
         found = ballast_from_readings(ends, length_m, loop, trust.loop)
@@ -107,14 +137,6 @@ def _both_ends(circuit: PlainCircuit, readings: Readings, trust: Trust) -> BothE
     feed_a, relay_a = readings.feed_a, readings.relay_a
     if feed_a is not None and relay_a is not None:
         return BothEnds(readings.feed_v, feed_a, readings.relay_v, relay_a)
-    needed = (("feed", feed_a, trust.feed), ("relay", relay_a, trust.relay))
-    faults = tuple(
-        Fault("missing", f"needed where the current at the {end} end is not measured", f"/{end}_relative_u")
-        for end, measured, known in needed
-        if measured is None and known is None
-    )
-    if faults:
-        raise NotAcceptableError("A current that is not measured is derived from what is known.", faults)
     derived = currents_from_voltages(
         circuit, readings.feed_v, readings.relay_v, trust.feed or 0.0, trust.relay or 0.0
     )
@@ -123,15 +145,6 @@ def _both_ends(circuit: PlainCircuit, readings: Readings, trust: Trust) -> BothE
 
 def _ac(circuit: PlainCircuit, readings: Readings, trust: Trust) -> Ballast:
     """By size alone, every value of the circuit in some doubt."""
-    faults = []
-    if trust.fitted is None:
-        faults.append(Fault("missing", "an AC circuit is fitted, its own values in doubt", "/doubt"))
-    if readings.relay_a is not None:
-        faults.append(Fault("not_used", "an AC fit has no use for this current", "/readings/relay_a"))
-    if not math.isfinite(float(circuit.line.ballast_ohm_km)):
-        faults.append(Fault("missing", "a fit begins at some ballast", "/circuit/line/ballast_ohm_km"))
-    if faults:
-        raise NotAcceptableError("The ballast of an AC circuit is fitted to its readings.", tuple(faults))
     assert trust.fitted is not None
     sight = Sight(
         relay_end_rail_v=readings.relay_v, feed_end_rail_v=readings.feed_v, feed_current_a=readings.feed_a

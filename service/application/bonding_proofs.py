@@ -8,8 +8,11 @@ from __future__ import annotations
 
 import math
 
-from service.application import layouts
+from sqlalchemy.engine import Connection
+
+from service.application import layouts, sections
 from service.application.circuit_cases import pointed
+from service.application.circuits import not_registered
 from service.electrical.bonding import Proof, bonding_proof, second_faults
 from service.electrical.hiding import Pair, Ranges
 from service.electrical.layout import Bond, Joint, Layout, LayoutFeed, LayoutRelay, Leg
@@ -27,6 +30,26 @@ ASSUMPTIONS = (
 
 MOST_FAULTS = 200
 """Bonds, rails and joints of one proof."""
+
+
+def registered(connection: Connection, depot: str, section: str) -> layouts.Layout:
+    """The layout of a section's present record, its emf at the highest that its feed is registered with.
+
+    Raises
+    ------
+    NotFoundError
+        No such section.
+    NotAcceptableError
+        The record has no layout.
+    """
+    content = sections.get(connection, depot, section).content
+    if content.layout is None:
+        raise not_registered(("layout",))
+    equipment = content.equipment
+    highest = None if equipment is None or equipment.feed is None else equipment.feed.emf_high_v
+    feed = content.layout.feed
+    emf_v = feed.emf_v if highest is None else max(feed.emf_v, highest)
+    return content.layout.model_copy(update={"feed": feed.model_copy(update={"emf_v": emf_v})})
 
 
 def proof(asked: layouts.Layout, shunt_ohm: float, first_fault: str | None) -> Proof:
@@ -57,7 +80,7 @@ def proof(asked: layouts.Layout, shunt_ohm: float, first_fault: str | None) -> P
 
 def _names(asked: layouts.Layout) -> set[str]:
     rails = {f"{leg.name}/rail{rail}" for leg in asked.legs for rail in (1, 2)}
-    return rails | {part.name for part in (*asked.bonds, *asked.joints)}
+    return rails | {bond.name for bond in asked.bonds} | {joint.name for joint in asked.joints}
 
 
 def _ranges(asked: layouts.Layout) -> Ranges:

@@ -40,12 +40,12 @@ class Cases:
 
 
 @contextmanager
-def pointed(prefix: str) -> Iterator[None]:
-    """Turn what no circuit has into a fault with a pointer that begins with `prefix`."""
+def pointed(prefix: str, *, whole: bool = False) -> Iterator[None]:
+    """Turn what no circuit has into a fault with a pointer that begins with `prefix`, or is all of it."""
     try:
         yield
     except NonPhysicalError as error:
-        pointer = prefix + "".join(f"/{part}" for part in error.field)
+        pointer = prefix if whole else prefix + "".join(f"/{part}" for part in error.field)
         fault = Fault("not_physical", error.reason, pointer)
         raise NotAcceptableError("No real circuit has such a value.", (fault,)) from None
 

@@ -133,6 +133,46 @@ def of_section(
     return Registered(cases, content, dry_ohm_km, _minimum_shunt_ohm(limits))
 
 
+@dataclass(frozen=True, slots=True)
+class Weather:
+    """The range of ballast, the dry end maybe infinite [ohm·km], and the shunt that must release [ohm]."""
+
+    wet_ohm_km: float
+    dry_ohm_km: float
+    minimum_shunt_ohm: float
+
+
+def weather(
+    wet_ohm_km: float | None,
+    dry_ohm_km: float | None,
+    minimum_shunt_ohm: float | None,
+    registered: Registered | None,
+    at: str = "",
+) -> Weather:
+    """What is stated, and of a registered section what its record and book say of the rest.
+
+    Raises
+    ------
+    NotAcceptableError
+        Something is stated nowhere; the pointer begins with `at`.
+    """
+    if registered is not None:
+        spread = registered.cases.spread
+        assert spread is not None
+        wet_ohm_km = spread.ballast_ohm_km[0] if wet_ohm_km is None else wet_ohm_km
+        dry_ohm_km = registered.dry_ohm_km if dry_ohm_km is None else dry_ohm_km
+        if minimum_shunt_ohm is None:
+            minimum_shunt_ohm = registered.minimum_shunt_ohm
+    if wet_ohm_km is not None and minimum_shunt_ohm is not None:
+        return Weather(wet_ohm_km, math.inf if dry_ohm_km is None else dry_ohm_km, minimum_shunt_ohm)
+    stated = {"wet_ohm_km": wet_ohm_km, "minimum_shunt_ohm": minimum_shunt_ohm}
+    reason = (
+        "must be given" if registered is None else "must be given: no limit book says it for this section"
+    )
+    faults = (Fault("missing", reason, f"{at}/{name}") for name, value in stated.items() if value is None)
+    raise NotAcceptableError("The weather or the shunt to work with is not stated.", tuple(faults))
+
+
 def not_registered(members: tuple[str, ...]) -> NotAcceptableError:
     """The refusal of a section whose record lacks members that a calculation needs."""
     faults = (Fault("not_registered", f"the register does not say {name}", "/section") for name in members)

@@ -11,6 +11,7 @@ from dataclasses import dataclass, replace
 
 from service.application.circuit_cases import Cases, pointed
 from service.application.circuits import Registered, not_registered
+from service.application.equipment import Feed
 from service.electrical import longest as lengths
 from service.electrical import setting as settings
 from service.electrical.changes import Spread
@@ -63,18 +64,20 @@ class Settings:
     worst: Window | None
 
 
-def registered_adjustment(registered: Registered) -> Adjustment:
-    """What the register says may be adjusted: the taps of the feed, else its resistor.
+def adjustment(asked: Adjustment | None, registered: Registered | None) -> Adjustment:
+    """What was asked for, or what the register says may be adjusted: the taps of the feed, else its resistor.
 
     Raises
     ------
     NotAcceptableError
-        It says neither, each missing member named.
+        Neither is stated, each missing member named.
     """
-    equipment = registered.content.equipment
-    feed = None if equipment is None else equipment.feed
-    assert feed is not None  # or there would be no circuit
-    assert feed.series_ohm is not None
+    if asked is not None:
+        return asked
+    if registered is None:
+        fault = Fault("missing", "must be given for a circuit that is not registered", "/adjustment")
+        raise NotAcceptableError("It is not stated what may be adjusted.", (fault,))
+    feed = _feed(registered)
     if feed.taps_v is not None and len(set(feed.taps_v)) > 1:
         taps_v = tuple(sorted(set(feed.taps_v)))
         return Adjustment("emf_v", taps_v[0], taps_v[-1], taps_v)
@@ -82,11 +85,25 @@ def registered_adjustment(registered: Registered) -> Adjustment:
     if low is None or high is None:
         ends = {"adjustable_from_ohm": low, "adjustable_to_ohm": high}
         raise not_registered(tuple(f"equipment.feed.{name}" for name, end in ends.items() if end is None))
-    return Adjustment("feed_ohm", low, high, step=feed.adjustable_step_ohm, fixed_ohm=feed.series_ohm[0])
+    return Adjustment("feed_ohm", low, high, step=feed.adjustable_step_ohm, fixed_ohm=fixed_ohm(registered))
 
 
-def setting(cases: Cases, requirements: Requirements, adjustment: Adjustment) -> Settings:
-    """The window of an adjustment.
+def fixed_ohm(registered: Registered) -> float:
+    """Of the feed's resistance, what cannot be adjusted [ohm]."""
+    series_ohm = _feed(registered).series_ohm
+    assert series_ohm is not None  # or there would be no circuit
+    return series_ohm[0]
+
+
+def _feed(registered: Registered) -> Feed:
+    equipment = registered.content.equipment
+    assert equipment is not None
+    assert equipment.feed is not None
+    return equipment.feed
+
+
+def setting(cases: Cases, requirements: Requirements, adjusted: Adjustment) -> Settings:
+    """The window of an adjusted.
 
     Raises
     ------
@@ -95,26 +112,26 @@ def setting(cases: Cases, requirements: Requirements, adjustment: Adjustment) ->
     NoAnswerError
         A degenerate circuit.
     """
-    fixed = adjustment.fixed_ohm
-    low, high = adjustment.low + fixed, adjustment.high + fixed
-    with pointed("/range"):
-        found = settings.setting(cases.nominal, requirements, adjustment.adjust, low, high)
-        values = adjustment.steps or _beside(found.best - fixed, adjustment)
+    fixed = adjusted.fixed_ohm
+    low, high = adjusted.low + fixed, adjusted.high + fixed
+    with pointed("/range", whole=True):
+        found = settings.setting(cases.nominal, requirements, adjusted.adjust, low, high)
+        values = adjusted.steps or _beside(found.best - fixed, adjusted)
         margins = (
             settings.stepped(
-                cases.nominal, requirements, adjustment.adjust, tuple(value + fixed for value in values)
+                cases.nominal, requirements, adjusted.adjust, tuple(value + fixed for value in values)
             )
             if values
             else ()
         )
-        worst = _worst(cases, requirements, adjustment.adjust, low, high)
+        worst = _worst(cases, requirements, adjusted.adjust, low, high)
     nominal = replace(found, window=_without(found.window, fixed), best=found.best - fixed)
     steps = tuple(Step(value, one) for value, one in zip(values, margins, strict=True))
     return Settings(nominal, steps, worst and Window(_without(worst.window, fixed), worst.binds))
 
 
 def longest(
-    cases: Cases, requirements: Requirements, upto_m: float, adjustment: Adjustment | None
+    cases: Cases, requirements: Requirements, upto_m: float, adjusted: Adjustment | None
 ) -> tuple[Longest, Longest | None]:
     """The longest length; in the worst cases only with the feed as it is.
 
@@ -125,16 +142,16 @@ def longest(
     NoAnswerError
         Code `no_length`: the requirements are met at no length.
     """
-    adjusted = None
-    if adjustment is not None:
-        low, high = adjustment.low + adjustment.fixed_ohm, adjustment.high + adjustment.fixed_ohm
+    span = None
+    if adjusted is not None:
+        low, high = adjusted.low + adjusted.fixed_ohm, adjusted.high + adjusted.fixed_ohm
         if not low < high:
             raise _upside_down()
-        adjusted = (adjustment.adjust, low, high)
-    with pointed("/range"):
-        nominal = lengths.longest(cases.nominal, requirements, upto_m, adjusted)
+        span = (adjusted.adjust, low, high)
+    with pointed("/range", whole=True):
+        nominal = lengths.longest(cases.nominal, requirements, upto_m, span)
     worst = cases.worst()
-    if worst is None or adjustment is not None:
+    if worst is None or adjusted is not None:
         return nominal, None
     found = [
         lengths.longest(case, held, upto_m, None)
@@ -180,13 +197,13 @@ def _factors(spread: Spread, adjust: Adjust) -> tuple[float, float]:
     return spread.supply if adjust == "emf_v" else (1.0, 1.0)
 
 
-def _beside(best: float, adjustment: Adjustment) -> tuple[float, ...]:
+def _beside(best: float, adjusted: Adjustment) -> tuple[float, ...]:
     """The steps of a resistor on either side of the best setting."""
-    if adjustment.step is None or adjustment.step == 0:
+    if adjusted.step is None or adjusted.step == 0:
         return ()
-    below = math.floor((best - adjustment.low) / adjustment.step)
-    values = (adjustment.low + at * adjustment.step for at in (below, below + 1))
-    return tuple(value for value in values if adjustment.low <= value <= adjustment.high)
+    below = math.floor((best - adjusted.low) / adjusted.step)
+    values = (adjusted.low + at * adjusted.step for at in (below, below + 1))
+    return tuple(value for value in values if adjusted.low <= value <= adjusted.high)
 
 
 def _without(span: Span | None, fixed_ohm: float) -> Span | None:

@@ -10,8 +10,10 @@ import math
 from collections.abc import Mapping
 from dataclasses import dataclass
 
+from sqlalchemy.engine import Connection
+
+from service.application import sections
 from service.application.circuit_cases import Cases, pointed
-from service.application.circuits import Registered, not_registered
 from service.electrical import traction
 from service.electrical.chain import shunt
 from service.electrical.changes import with_element
@@ -20,6 +22,12 @@ from service.electrical.traction import RailBalance, Train
 from service.errors import Fault, NoAnswerError, NotAcceptableError
 
 TRAINS: tuple[Train, ...] = ("none", "feed_end", "relay_end")
+
+BALANCE_MODEL = "Ohm's law over equal lengths of two rails; a bond's ampere-turns are (N/2)(I1 - I2)."
+BALANCE_ASSUMPTIONS = (
+    "Both drops were read at one moment, over lengths without joints or connections.",
+    "Both rails have the impedance given, at the traction frequency.",
+)
 
 _UNKNOWN = 1.0
 """Stands for what was not stated of a bond; what rests on it is not answered."""
@@ -109,20 +117,17 @@ def balance(drops: Drops) -> Balance:
     return Balance(found, turns, margin)
 
 
-def bond_turns(registered: Registered) -> float:
-    """Turns of the section's impedance bonds, as registered.
+def registered_turns(connection: Connection, depot: str, section: str) -> float | None:
+    """Turns of a section's impedance bonds; None where its record says none.
 
     Raises
     ------
-    NotAcceptableError
-        The register does not say.
+    NotFoundError
+        No such section.
     """
-    equipment = registered.content.equipment
-    for end in ("feed_bond", "relay_bond"):
-        turns: int | None = getattr(getattr(equipment, end, None), "turns", None)
-        if turns is not None:
-            return float(turns)
-    raise not_registered(("equipment.feed_bond.turns",))
+    equipment = sections.get(connection, depot, section).content.equipment
+    bonds = (getattr(equipment, end, None) for end in ("feed_bond", "relay_bond"))
+    return next((float(bond.turns) for bond in bonds if bond is not None and bond.turns is not None), None)
 
 
 def saturated(circuit: PlainCircuit, bond_ohm: complex) -> dict[str, OperatingPoint]:
@@ -138,7 +143,7 @@ def saturated(circuit: PlainCircuit, bond_ohm: complex) -> dict[str, OperatingPo
     ):
         fault = Fault("not_physical", "the section has no impedance bonds", "/saturated_bond_ohm")
         raise NotAcceptableError("No real circuit has such a value.", (fault,))
-    with pointed("/saturated_bond_ohm"):
+    with pointed("/saturated_bond_ohm", whole=True):
         two_port = shunt(bond_ohm)
     found = {"sound": operating_point(circuit)}
     for name in ("feed bond", "relay bond"):

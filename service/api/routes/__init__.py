@@ -2,6 +2,7 @@
 
 from service.api.routes import (
     audits,
+    calculations,
     checks,
     concessions,
     depots,
@@ -33,5 +34,6 @@ ROUTERS = (
     limit_books.router,
     section_limits.router,
     checks.router,
+    calculations.router,
     health.router,
 )
