@@ -8,7 +8,7 @@ from __future__ import annotations
 import re
 from collections.abc import Iterator, Mapping
 from dataclasses import dataclass
-from datetime import datetime, timedelta
+from datetime import UTC, datetime, timedelta
 from operator import attrgetter, itemgetter
 from typing import Any
 
@@ -21,6 +21,9 @@ from service.rules.words import Comparison, Source
 DIGEST_TAG = "shuntbook-visit-1"
 AHEAD = timedelta(seconds=300)
 """How far a handheld's clock may run ahead before its visit is refused."""
+
+EARLIEST = datetime(1900, 1, 1, tzinfo=UTC)
+"""A visit before it has a clock that was never set; nothing measured then could be judged. Our choice."""
 
 TEST_POINT = re.compile(r"feed_end|relay_end|middle|leg:[A-Za-z0-9._()-]{1,40}")
 
@@ -150,6 +153,8 @@ def faults(draft: Draft, now: datetime) -> list[Fault]:
     if draft.visited_at > now + AHEAD:
         reason = f"lies in the future: the server's time is {instant_text(now)}"
         found.append(Fault("in_the_future", reason, "/visited_at"))
+    if draft.visited_at < EARLIEST:
+        found.append(Fault("before_any_record", f"lies before {EARLIEST.date()}", "/visited_at"))
     if draft.replaces == draft.visit:
         found.append(Fault("replaces_itself", "a visit cannot replace itself", "/replaces"))
     found.extend(_repeated("tasks", "task", [task.task for task in draft.tasks]))

@@ -110,6 +110,8 @@ class Intake:
         if not versions:
             yield Fault("unknown_section", "this depot has no such section", "/section")
             return
+        if not visit_content.EARLIEST <= draft.visited_at <= self.tx.now + visit_content.AHEAD:
+            return  # said already, and may have no day in the depot's zone
         day = draft.visited_at.astimezone(ZoneInfo(self.time_zone)).date()
         record = version_on(versions, day) or versions[0]
         if record.state == SectionState.RECOVERED:

@@ -10,13 +10,12 @@ from datetime import date
 from typing import Annotated
 
 from fastapi import APIRouter, Depends, Query, Request
-from pydantic import AwareDatetime
 from starlette.responses import Response
 
 from service.api import conditional
 from service.api.answers import JSON
 from service.api.deps import PathName, needs, service_of
-from service.api.schemas.status import StatusAnswer
+from service.api.schemas.status import StatusAnswer, UtcInstant
 from service.application import status
 from service.application.answers import status_json
 
@@ -35,7 +34,7 @@ def get_status(
     depot: PathName,
     section: PathName,
     as_of: Annotated[date | None, Query(description="Default: the depot's today")] = None,
-    as_known_at: Annotated[AwareDatetime | None, Query(description="Default: all that is stored")] = None,
+    as_known_at: Annotated[UtcInstant | None, Query(description="Default: all that is stored")] = None,
 ) -> Response:
     """Every limit and task of one track circuit: what was measured, the limit, the margin, and why."""
     service = service_of(request)

@@ -13,14 +13,14 @@ from typing import Annotated, Any
 
 import pydantic_core
 from fastapi import APIRouter, Depends, Query, Request
-from pydantic import AwareDatetime
 from starlette.responses import Response
 
 from service.api import bodies, bounds, conditional
-from service.api.answers import JSON, NDJSON, answer
+from service.api.answers import JSON, NDJSON
 from service.api.deps import Caller, PathId, PathName, body_of, needs, service_of
 from service.api.paging import Page, Paging, link, paging
 from service.api.problems import problem_of
+from service.api.schemas.status import UtcInstant
 from service.api.schemas.visits import (
     OUTCOME,
     VISIT,
@@ -51,7 +51,11 @@ def clock_offset_s(request: Request, now: datetime) -> int | None:
         return None
     if stated.tzinfo is None:
         return None
-    return round((stated - now).total_seconds())
+    return max(-_FURTHEST_S, min(_FURTHEST_S, round((stated - now).total_seconds())))
+
+
+_FURTHEST_S = 2**31 - 1
+"""The furthest off a clock is said to be, 68 years: as much as the record holds."""
 
 
 def _minimal(request: Request) -> bool:
@@ -217,7 +221,7 @@ def list_visits(
     depot: PathName,
     paged: Annotated[Paging, Depends(paging)],
     section: Annotated[str | None, Query(max_length=40)] = None,
-    received_after: Annotated[AwareDatetime | None, Query()] = None,
+    received_after: Annotated[UtcInstant | None, Query()] = None,
 ) -> Response:
     """Visits in the order in which they were received."""
     return _page(request, depot, paged, section, received_after)
@@ -277,7 +281,7 @@ def get_visit(request: Request, depot: PathName, visit: PathId) -> Response:
         if fresh.not_modified is not None:
             return fresh.not_modified
         found = visit_records.get(connection, depot, visit)
-    return answer(VisitAnswer.model_validate(found), fresh.headers)
+    return Response(canonical(found), headers=fresh.headers, media_type=JSON)
 
 
 @router.post("/v1/depots/{depot}/visits/{visit}/void", response_model=VisitAnswer, responses={409: {}})
@@ -291,4 +295,4 @@ def void_visit(
     """Declare a visit void: it stays on record and counts no longer."""
     with service_of(request).unit_of_work(caller.actor) as tx:
         content = visits.void(tx, depot, visit, sent.why)
-    return answer(VisitAnswer.model_validate(content))
+    return Response(canonical(content), media_type=JSON)

@@ -5,9 +5,10 @@ Their examples serve the schemas of visits, audits and findings too.
 
 from __future__ import annotations
 
-from typing import Any
+from datetime import UTC, datetime
+from typing import Annotated, Any
 
-from pydantic import ConfigDict
+from pydantic import AfterValidator, AwareDatetime, ConfigDict
 
 from service.api.schemas.base import Answer, Instant
 from service.rules.words import (
@@ -19,6 +20,18 @@ from service.rules.words import (
     TaskState,
     VerdictWord,
 )
+
+
+def _in_utc(at: datetime) -> datetime:
+    """An instant in UTC; one within hours of the first or the last year there is may have none."""
+    try:
+        return at.astimezone(UTC)
+    except OverflowError:
+        raise ValueError("lies outside the calendar") from None
+
+
+UtcInstant = Annotated[AwareDatetime, AfterValidator(_in_utc)]
+"""An RFC 3339 instant as sent, any offset accepted; in UTC from here on."""
 
 REASON: dict[str, Any] = {
     "code": "undecided",

@@ -10,7 +10,7 @@ from typing import Annotated, Any, Literal
 from pydantic import ConfigDict, Field, StringConstraints
 
 from service.api.schemas.base import Answer, Instant, Line, Name, Remarks, Request
-from service.api.schemas.status import SUMMARY, VERDICT, SummaryAnswer, VerdictAnswer
+from service.api.schemas.status import SUMMARY, VERDICT, SummaryAnswer, UtcInstant, VerdictAnswer
 from service.application.visit_content import Draft, ReadingDraft, TaskDraft, whole
 from service.rules.words import (
     Ballast,
@@ -105,7 +105,7 @@ class VisitSent(Request):
 
     visit: VisitId
     section: Name
-    visited_at: Instant
+    visited_at: UtcInstant
     device: Name | None = None
     tester: Line | None = None
     conditions: ConditionsSent | None = None
