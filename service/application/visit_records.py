@@ -115,7 +115,7 @@ def _wire_rows(
                 row.source,
             )
         )
-    return [_wire_row(row, tuple(found[row.visit])) for row in rows]
+    return [wire_row(row, tuple(found[row.visit])) for row in rows]
 
 
 def draft_of(row: Row[Any], given: tuple[ReadingDraft, ...]) -> Draft:
@@ -127,7 +127,8 @@ def draft_of(row: Row[Any], given: tuple[ReadingDraft, ...]) -> Draft:
     return Draft(**plain, tasks=tasks, work_done=tuple(json.loads(row.work_done)), readings=given)
 
 
-def _wire_row(row: Row[Any], given: tuple[ReadingDraft, ...]) -> dict[str, Any]:
+def wire_row(row: Row[Any], given: tuple[ReadingDraft, ...]) -> dict[str, Any]:
+    """A visit in its wire form, from its row joined with its void and its readings as given."""
     voided = None
     if row.voided_at is not None:
         voided = {"voided_at": instant_text(row.voided_at), "voided_by": row.voided_by, "why": row.why}

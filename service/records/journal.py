@@ -187,7 +187,7 @@ class Break:
 def verify(connection: Connection, depot: str) -> Break | None:
     """Walk a chain from its first line; None if every line fits and the head agrees."""
     expected, digest = 0, START
-    with _any_bytes(connection), closing(lines(connection, depot)) as rows:
+    with any_bytes(connection), closing(lines(connection, depot)) as rows:
         for row in rows:
             expected += 1
             if row["sequence"] != expected:
@@ -221,7 +221,7 @@ def _misfit(row: dict[str, Any], previous: str) -> str | None:
 
 
 @contextmanager
-def _any_bytes(connection: Connection) -> Iterator[None]:
+def any_bytes(connection: Connection) -> Iterator[None]:
     """Read what is no UTF-8 too: SQLite keeps whatever bytes a column was overwritten with."""
     raw: Any = connection.connection.dbapi_connection
     if connection.dialect.name == "sqlite":

@@ -12,6 +12,8 @@ from datetime import UTC, date, datetime, timedelta
 from itertools import count
 from typing import Any
 
+import sqlalchemy as sa
+
 from service.app import make_service
 from service.application import audits, depots, editions, instruments, sections, visits
 from service.application.context import Service
@@ -103,6 +105,15 @@ class World:
         """The sections of a weekly list, in order."""
         found: list[dict[str, Any]] = self.read(audits.weekly_list, on).sections
         return found
+
+    @contextmanager
+    def undone(self) -> Iterator[sa.Connection]:
+        """A transaction of which nothing is kept, to tamper in."""
+        with self.service.database.engine.connect() as plain:
+            connection = plain.execution_options(shuntbook_writes=True)
+            with connection.begin() as transaction:
+                yield connection
+                transaction.rollback()
 
     def week(self) -> None:
         self.clock.move(days=7)
