@@ -25,23 +25,27 @@ from service.api.schemas.bonding_proofs import ProofAnswer, ProofSent
 from service.api.schemas.calculations import (
     LimitsAnswer,
     LimitsCasesAnswer,
+    LimitsReply,
     LimitsSent,
     PointAnswer,
     PointCasesAnswer,
+    PointReply,
     PointSent,
     SeasonAnswer,
     SeasonCasesAnswer,
+    SeasonReply,
     SeasonSent,
 )
 from service.api.schemas.circuits import CAUTION, SURFACE_CAUTION, Asked, AskedWithSpread
-from service.api.schemas.examples import shown
 from service.api.schemas.feed_settings import (
     AskedToSet,
     LongestAnswer,
     LongestCasesAnswer,
+    LongestReply,
     LongestSent,
     SettingAnswer,
     SettingCasesAnswer,
+    SettingReply,
     SettingSent,
 )
 from service.api.schemas.traction_currents import (
@@ -49,6 +53,7 @@ from service.api.schemas.traction_currents import (
     BalanceSent,
     InterferenceAnswer,
     InterferenceCasesAnswer,
+    InterferenceReply,
     InterferenceSent,
 )
 from service.errors import NotFoundError
@@ -105,9 +110,7 @@ def _refuse_other_depots(caller: Caller, depot: str) -> None:
         raise NotFoundError("There is no such depot.")
 
 
-@router.post(
-    "/operating-point", response_model=PointAnswer | PointCasesAnswer, responses=shown("operating-point")
-)
+@router.post("/operating-point", response_model=PointReply)
 def calculate_operating_point(
     request: Request, caller: Reader, sent: Annotated[PointSent, Depends(body_of(PointSent))]
 ) -> Response:
@@ -124,9 +127,7 @@ def calculate_operating_point(
     return answer(PointCasesAnswer.model_validate(stated | cases))
 
 
-@router.post(
-    "/shunt-limits", response_model=LimitsAnswer | LimitsCasesAnswer, responses=shown("shunt-limits")
-)
+@router.post("/shunt-limits", response_model=LimitsReply)
 def calculate_shunt_limits(
     request: Request, caller: Reader, sent: Annotated[LimitsSent, Depends(body_of(LimitsSent))]
 ) -> Response:
@@ -142,7 +143,7 @@ def calculate_shunt_limits(
     return answer(LimitsCasesAnswer.model_validate(stated | cases))
 
 
-@router.post("/season", response_model=SeasonAnswer | SeasonCasesAnswer, responses=shown("season"))
+@router.post("/season", response_model=SeasonReply)
 def calculate_season(
     request: Request, caller: Reader, sent: Annotated[SeasonSent, Depends(body_of(SeasonSent))]
 ) -> Response:
@@ -177,7 +178,7 @@ def _requirements(found: _Found, sent: AskedToSet) -> Requirements:
     )
 
 
-@router.post("/setting", response_model=SettingAnswer | SettingCasesAnswer, responses=shown("setting"))
+@router.post("/setting", response_model=SettingReply)
 def calculate_setting(
     request: Request, caller: Reader, sent: Annotated[SettingSent, Depends(body_of(SettingSent))]
 ) -> Response:
@@ -196,7 +197,7 @@ def calculate_setting(
     return answer(SettingCasesAnswer(**stated, nominal=values, worst_case=worst))
 
 
-@router.post("/longest", response_model=LongestAnswer | LongestCasesAnswer, responses=shown("longest"))
+@router.post("/longest", response_model=LongestReply)
 def calculate_longest(
     request: Request, caller: Reader, sent: Annotated[LongestSent, Depends(body_of(LongestSent))]
 ) -> Response:
@@ -213,7 +214,7 @@ def calculate_longest(
     return answer(LongestCasesAnswer(**stated, nominal=values, worst_case=worst_case))
 
 
-@router.post("/ballast", response_model=BallastAnswer, responses=shown("ballast"))
+@router.post("/ballast", response_model=BallastAnswer)
 def calculate_ballast(
     request: Request, caller: Reader, sent: Annotated[BallastSent, Depends(body_of(BallastSent))]
 ) -> Response:
@@ -228,7 +229,7 @@ def calculate_ballast(
     )
 
 
-@router.post("/rail-balance", response_model=BalanceAnswer, responses=shown("rail-balance"))
+@router.post("/rail-balance", response_model=BalanceAnswer)
 def calculate_rail_balance(
     request: Request, caller: Reader, sent: Annotated[BalanceSent, Depends(body_of(BalanceSent))]
 ) -> Response:
@@ -260,8 +261,7 @@ def calculate_rail_balance(
 
 @router.post(
     "/interference",
-    response_model=InterferenceAnswer | InterferenceCasesAnswer,
-    responses=shown("interference"),
+    response_model=InterferenceReply,
 )
 def calculate_interference(
     request: Request, caller: Reader, sent: Annotated[InterferenceSent, Depends(body_of(InterferenceSent))]
@@ -278,7 +278,7 @@ def calculate_interference(
     return answer(InterferenceCasesAnswer(**stated, nominal=values, worst_case=worst_case))
 
 
-@router.post("/bonding-proof", response_model=ProofAnswer, responses=shown("bonding-proof"))
+@router.post("/bonding-proof", response_model=ProofAnswer)
 def calculate_bonding_proof(
     request: Request, caller: Reader, sent: Annotated[ProofSent, Depends(body_of(ProofSent))]
 ) -> Response:

@@ -11,6 +11,7 @@ from pydantic import ConfigDict, Field
 
 from service.api.schemas.base import Answer, Request
 from service.api.schemas.circuits import Asked, RelativeU, ShuntSent, Stated, Volt, number
+from service.api.schemas.examples import shown
 
 if TYPE_CHECKING:
     from service.application.ballast_estimates import Ballast, Readings, Trust
@@ -123,6 +124,8 @@ class BallastAnswer(Stated):
     `handbook_ohm_km` is the handbook formula's, which reads high. `working_drop_away_v` is the coil voltage
     at which the measured drop shunt released the relay.
     """
+
+    model_config = ConfigDict(json_schema_extra=shown("ballast"))
 
     ballast_ohm_km: float
     relative_u: float

@@ -11,6 +11,7 @@ from pydantic import ConfigDict, StringConstraints, model_validator
 
 from service.api.schemas.base import Answer, Name, Request
 from service.api.schemas.circuits import Phasor, SomeOhm, Stated, number, phasor
+from service.api.schemas.examples import shown
 from service.application.layouts import Layout
 
 if TYPE_CHECKING:
@@ -81,6 +82,8 @@ class FaultAnswer(Answer):
 
 class ProofAnswer(Stated):
     """The sound layout's relay, every bond and `leg/rail1`, `leg/rail2` opened, every joint shorted."""
+
+    model_config = ConfigDict(json_schema_extra=shown("bonding-proof"))
 
     relay_v: Phasor
     opened: dict[str, FaultAnswer]

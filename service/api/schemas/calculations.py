@@ -8,7 +8,7 @@ from __future__ import annotations
 
 from typing import TYPE_CHECKING, Any, Literal
 
-from pydantic import ConfigDict
+from pydantic import ConfigDict, RootModel
 
 from service.api.schemas.base import Answer
 from service.api.schemas.circuits import (
@@ -24,6 +24,7 @@ from service.api.schemas.circuits import (
     number_or_null,
     phasor,
 )
+from service.api.schemas.examples import shown
 
 if TYPE_CHECKING:
     from service.application.calculations import Limits, Point
@@ -121,6 +122,12 @@ class PointCasesAnswer(Stated):
     worst_case: PointValues
 
 
+class PointReply(RootModel[PointAnswer | PointCasesAnswer]):
+    """As it stands, or with its worst case beside it."""
+
+    model_config = ConfigDict(json_schema_extra=shown("operating-point"))
+
+
 class PlaceAnswer(Answer):
     """The smallest value along the section, and where it is from the feed end."""
 
@@ -170,6 +177,12 @@ class LimitsCasesAnswer(Stated):
     worst_case: LimitsValues
 
 
+class LimitsReply(RootModel[LimitsAnswer | LimitsCasesAnswer]):
+    """As it stands, or with its worst case beside it."""
+
+    model_config = ConfigDict(json_schema_extra=shown("shunt-limits"))
+
+
 class SeasonPoint(Answer):
     """One ballast, null for infinite; the drop shunt is null where the relay is released with no train."""
 
@@ -203,6 +216,12 @@ class SeasonCasesAnswer(Stated):
     minimum_shunt_ohm: float
     nominal: SeasonValues
     worst_case: SeasonValues
+
+
+class SeasonReply(RootModel[SeasonAnswer | SeasonCasesAnswer]):
+    """As it stands, or with its worst case beside it."""
+
+    model_config = ConfigDict(json_schema_extra=shown("season"))
 
 
 def relay_word(state: RelayState) -> RelayWord:

@@ -7,15 +7,21 @@ from __future__ import annotations
 
 from typing import Any
 
-from service.api.schemas.circuits import CAUTION
+from service.api.schemas.circuits import CAUTION, SURFACE_CAUTION
 
 _STATED = {
     "depot": None,
     "section": None,
     "model": "A feed, a uniform line and a relay, solved exactly in the steady state.",
     "assumptions": ["Rails and ballast are uniform along the section, and rails are not connected to earth."],
-    "caution": CAUTION,
+    "caution": SURFACE_CAUTION,
 }
+
+_WITHOUT_TRAIN = (
+    "operating-point",
+    "rail-balance",
+    "interference",
+)
 
 _ANSWERS: dict[str, Any] = {
     "operating-point": {
@@ -79,6 +85,8 @@ _ANSWERS: dict[str, Any] = {
         "working_drop_away_v": 0.2299,
     },
     "rail-balance": {
+        "model": "Ohm's law over equal lengths of two rails; a bond's ampere-turns are (N/2)(I1 - I2).",
+        "assumptions": ["Both drops were read at one moment, over lengths without joints or connections."],
         "rail_1_a": 300.0,
         "rail_2_a": 271.4,
         "difference_a": 28.57,
@@ -99,6 +107,12 @@ _ANSWERS: dict[str, Any] = {
         "largest_current_a": 308.7,
     },
     "bonding-proof": {
+        "model": "Legs as exact four-terminal lines, two rails with leakage between them "
+        "and to earth, in a nodal network with bonds, feed and relay, solved in "
+        "the steady state.",
+        "assumptions": [
+            "Rails and ballast are uniform along each leg, and sound insulated joints do not conduct."
+        ],
         "relay_v": [4.79, 0.0],
         "opened": {
             "a/rail1": {
@@ -121,6 +135,7 @@ _ANSWERS: dict[str, Any] = {
 }
 
 
-def shown(calculation: str) -> dict[int | str, dict[str, Any]]:
-    """The example of a calculation's answer, as the framework takes it."""
-    return {200: {"content": {"application/json": {"example": _STATED | _ANSWERS[calculation]}}}}
+def shown(calculation: str) -> dict[str, Any]:
+    """For `json_schema_extra`: the answer to the request's example."""
+    caution = {"caution": CAUTION} if calculation in _WITHOUT_TRAIN else {}
+    return {"examples": [_STATED | _ANSWERS[calculation] | caution]}

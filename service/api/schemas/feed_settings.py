@@ -8,7 +8,7 @@ from __future__ import annotations
 import math
 from typing import TYPE_CHECKING, Annotated, Any, Literal
 
-from pydantic import ConfigDict, Field, model_validator
+from pydantic import ConfigDict, Field, RootModel, model_validator
 
 from service.api.schemas.base import Answer, Request
 from service.api.schemas.circuits import (
@@ -22,6 +22,7 @@ from service.api.schemas.circuits import (
     number,
     number_or_null,
 )
+from service.api.schemas.examples import shown
 
 if TYPE_CHECKING:
     from service.application.circuits import Registered
@@ -176,6 +177,12 @@ class SettingCasesAnswer(Stated):
     worst_case: WindowAnswer
 
 
+class SettingReply(RootModel[SettingAnswer | SettingCasesAnswer]):
+    """As it stands, or with its worst case beside it."""
+
+    model_config = ConfigDict(json_schema_extra=shown("setting"))
+
+
 class LongestValues(Answer):
     """The longest circuit, and the requirement that binds it; `range` where none does."""
 
@@ -192,6 +199,12 @@ class LongestCasesAnswer(Stated):
 
     nominal: LongestValues
     worst_case: LongestValues | None
+
+
+class LongestReply(RootModel[LongestAnswer | LongestCasesAnswer]):
+    """As it stands, or with its worst case beside it."""
+
+    model_config = ConfigDict(json_schema_extra=shown("longest"))
 
 
 def setting_values(found: Settings) -> SettingValues:

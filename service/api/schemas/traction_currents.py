@@ -7,7 +7,7 @@ from __future__ import annotations
 
 from typing import TYPE_CHECKING, Annotated, Any, Literal
 
-from pydantic import ConfigDict, Field, model_validator
+from pydantic import ConfigDict, Field, RootModel, model_validator
 
 from service.api.schemas.base import Answer, Name, Request
 from service.api.schemas.calculations import RelayWord, relay_word
@@ -22,6 +22,7 @@ from service.api.schemas.circuits import (
     number,
     phasor,
 )
+from service.api.schemas.examples import shown
 from service.application.equipment import Impedance
 
 if TYPE_CHECKING:
@@ -108,6 +109,8 @@ class BalanceAnswer(Stated):
     `ampere_turns` is (N/2)(I1 - I2) of the bond, `saturation_margin` 1 less its share of those at which
     the bond saturates.
     """
+
+    model_config = ConfigDict(json_schema_extra=shown("rail-balance"))
 
     rail_1_a: float
     rail_2_a: float
@@ -204,6 +207,12 @@ class InterferenceCasesAnswer(Stated):
 
     nominal: InterferenceValues
     worst_case: InterferenceValues
+
+
+class InterferenceReply(RootModel[InterferenceAnswer | InterferenceCasesAnswer]):
+    """As it stands, or with its worst case beside it."""
+
+    model_config = ConfigDict(json_schema_extra=shown("interference"))
 
 
 def balance_values(found: Balance) -> dict[str, Any]:
