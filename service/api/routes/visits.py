@@ -60,7 +60,9 @@ _FURTHEST_S = 2**31 - 1
 
 def _minimal(request: Request) -> bool:
     """`Prefer: return=minimal` (RFC 7240) leaves verdicts out."""
-    return "return=minimal" in request.headers.get("prefer", "").replace(" ", "")
+    stated = ",".join(request.headers.getlist("prefer")).split(",")
+    wanted = {preference.partition(";")[0].replace(" ", "").replace('"', "").lower() for preference in stated}
+    return "return=minimal" in wanted
 
 
 def _outcome(outcome: visits.Outcome, request: Request, now: datetime) -> dict[str, Any]:
@@ -204,13 +206,19 @@ def _lines(raw: bodies.Raw) -> Iterator[Draft | _Unread]:
 
 def _array(raw: bodies.Raw) -> Iterator[Draft | _Unread]:
     try:
-        items = pydantic_core.from_json(raw.content, allow_inf_nan=False)
-    except ValueError:
+        items = json.loads(raw.content.decode(), parse_int=float, parse_constant=_no_number)
+    except (ValueError, RecursionError):
         raise UnparsableError("The body is not JSON in UTF-8 of a reasonable depth.") from None
     if not isinstance(items, list):
         raise UnparsableError("A batch is a JSON array of visits, or one visit a line.")
     for item in _counted(items):
-        yield _read(pydantic_core.to_json(item), item)
+        # the standard library passes on half a surrogate pair or a number too large for a double, so that
+        # the strict parser refuses that item alone
+        yield _read(json.dumps(item).encode(), item)
+
+
+def _no_number(constant: str) -> None:
+    raise ValueError(f"{constant} is not JSON")
 
 
 @router.get(
