@@ -114,7 +114,7 @@ def setting(cases: Cases, requirements: Requirements, adjusted: Adjustment) -> S
     """
     fixed = adjusted.fixed_ohm
     low, high = adjusted.low + fixed, adjusted.high + fixed
-    with pointed("/range", whole=True):
+    with pointed("/adjustment", whole=True):
         found = settings.setting(cases.nominal, requirements, adjusted.adjust, low, high)
         values = adjusted.steps or _beside(found.best - fixed, adjusted)
         margins = (
@@ -148,7 +148,7 @@ def longest(
         if not low < high:
             raise _upside_down()
         span = (adjusted.adjust, low, high)
-    with pointed("/range", whole=True):
+    with pointed("/adjustment", whole=True):
         nominal = lengths.longest(cases.nominal, requirements, upto_m, span)
     worst = cases.worst()
     if worst is None or adjusted is not None:
@@ -161,7 +161,7 @@ def longest(
 
 
 def _upside_down() -> NotAcceptableError:
-    fault = Fault("not_physical", "the low end is not under the high end", "/range")
+    fault = Fault("not_physical", "the low end is not under the high end", "/adjustment")
     return NotAcceptableError("No real circuit has such a value.", (fault,))
 
 

@@ -11,6 +11,7 @@ import httpx
 
 from service.application import editions, sections
 from service.application import equipment as parts
+from service.rules.words import CircuitKind
 from support import limit_books
 from support.api import ACTOR, Api
 from support.register import plain
@@ -99,7 +100,11 @@ class Bench:
 
     def section(self, name: str, kind: str = "dc", length_m: float | None = 1000.0, **changes: Any) -> str:
         """Register a section and give its name; `equipment` and members of a section may be changed."""
-        given = {"equipment": equipment(kind), "length_m": length_m, "circuit_kind": kind} | changes
+        given = {
+            "equipment": equipment(kind),
+            "length_m": length_m,
+            "circuit_kind": CircuitKind(kind),
+        } | changes
         with self.api.service.unit_of_work(ACTOR) as tx:
             sections.create(tx, "ashby", name, plain(**given))
         return name
