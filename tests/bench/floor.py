@@ -17,16 +17,16 @@ from psycopg_pool import ConnectionPool
 
 from service.records.engine import digest_of
 
-VISIT = """INSERT INTO visit (depot, visit, section, visited_at, received_at, received_by, holder, found_outside, tasks,
- work_done, digest, tester, ballast, rail, condition_left, device) VALUES
+VISIT = """INSERT INTO visit (depot, visit, section, visited_at, received_at, received_by, holder,
+ found_outside, tasks, work_done, digest, tester, ballast, rail, condition_left, device) VALUES
  (%s, %s, %s, %s, %s, 'k', 'h', false, %s, '[]', %s, %s, %s, %s, %s, %s)"""
-READINGS = """INSERT INTO reading (depot, visit, quantity, test_point, stage, section, visited_at, comparison, value,
- value_given, unit_given, instrument, shunt_ohm, source) SELECT * FROM unnest(%s::text[], %s::text[], %s::text[],
- %s::text[], %s::text[], %s::text[], %s::timestamptz[], %s::text[], %s::float8[], %s::float8[], %s::text[],
- %s::text[], %s::float8[], %s::text[])"""
+READINGS = """INSERT INTO reading (depot, visit, quantity, test_point, stage, section, visited_at, comparison,
+ value, value_given, unit_given, instrument, shunt_ohm, source) SELECT * FROM unnest(%s::text[], %s::text[],
+ %s::text[], %s::text[], %s::text[], %s::text[], %s::timestamptz[], %s::text[], %s::float8[], %s::float8[],
+ %s::text[], %s::text[], %s::float8[], %s::text[])"""
 LATEST = """INSERT INTO latest (depot, visit, quantity, test_point, section, visited_at, comparison, as_left,
- instrument, shunt_ohm, source) SELECT * FROM unnest(%s::text[], %s::text[], %s::text[], %s::text[], %s::text[],
- %s::timestamptz[], %s::text[], %s::float8[], %s::text[], %s::float8[], %s::text[])
+ instrument, shunt_ohm, source) SELECT * FROM unnest(%s::text[], %s::text[], %s::text[], %s::text[],
+ %s::text[], %s::timestamptz[], %s::text[], %s::float8[], %s::text[], %s::float8[], %s::text[])
  ON CONFLICT (depot, section, quantity, test_point) DO UPDATE SET visit = excluded.visit,
  visited_at = excluded.visited_at, as_left = excluded.as_left"""
 STATUS = """INSERT INTO status (depot, section, as_of, compliance, overdue, holds_until, sequence)
@@ -116,7 +116,7 @@ def floor_app(url: str, threads: int) -> FastAPI:
         return await request.body()
 
     @app.post("/v1/depots/{depot}/visits")
-    def post(depot: str, raw: bytes = Depends(body)) -> Response:  # noqa: B008
+    def post(depot: str, raw: bytes = Depends(body)) -> Response:
         with pool.connection() as connection, connection.cursor() as cursor:
             write(cursor, depot, json.loads(raw), raw.decode())
         return Response(b"{}", 201, media_type="application/json")

@@ -7,9 +7,13 @@ from __future__ import annotations
 
 import argparse
 import json
+import os
+import socket
 import subprocess
 import sys
+import tempfile
 import time
+import urllib.request
 from collections.abc import Iterator
 from contextlib import contextmanager
 from datetime import timedelta
@@ -19,14 +23,17 @@ from typing import Any
 HERE = Path(__file__).parent
 sys.path[:0] = [str(HERE), str(HERE.parent)]
 
+import national  # noqa: E402
 import psycopg  # noqa: E402
 import world as worlds  # noqa: E402
+
 from support import postgres  # noqa: E402
 
 CLIENTS = 16
 WARM_UP = 100
 SLOW_COMMIT = """
-CREATE FUNCTION slow_commit() RETURNS trigger LANGUAGE plpgsql AS $$ BEGIN PERFORM pg_sleep(0.005); RETURN NULL; END $$;
+CREATE FUNCTION slow_commit() RETURNS trigger LANGUAGE plpgsql AS $$
+BEGIN PERFORM pg_sleep(0.005); RETURN NULL; END $$;
 CREATE CONSTRAINT TRIGGER slow_commit AFTER INSERT ON journal DEFERRABLE INITIALLY DEFERRED
 FOR EACH ROW EXECUTE FUNCTION slow_commit();
 """
@@ -105,7 +112,8 @@ def p1(servers: postgres.Databases) -> None:
             )
             say(
                 "P1",
-                f"{name}: {ours / floor:.2f} of the floor ({ours:.0f}/s of {floor:.0f}/s; first bar 0.4, aim 0.7)",
+                f"{name}: {ours / floor:.2f} of the floor ({ours:.0f}/s of {floor:.0f}/s; "
+                "first bar 0.4, aim 0.7)",
             )
 
 
@@ -162,6 +170,59 @@ def p2(servers: postgres.Databases) -> None:
     say("P2", f"{ours / raw:.2f} of raw COPY ({ours:.0f} of {raw:.0f} readings/s; first bar 0.2, aim 0.4)")
 
 
+def p3(servers: postgres.Databases) -> None:
+    """Audit of 10,000 and 100,000 sections by twenty limits (P3, P4), and a page of them by status (P5)."""
+    found, pages = {}, {}
+    for count in (1_000, 10_000, 100_000):
+        with servers.cloned(_empty) as url:
+            worlds.build(url, 1, count).service.database.close()
+            national.fill(plain(url))
+            pages[count] = national.measured("list", url)
+            if count > 1_000:
+                found[count] = national.measured("audit", url)
+    large, small = found[100_000], found[10_000]
+    say(
+        "P3",
+        f"{large['seconds']:.1f} s, {large['mib']:.0f} MiB more (first bar 25 s, 400 MiB; aim 8 s, 200 MiB)",
+    )
+    say(
+        "P4",
+        f"x {large['seconds'] / small['seconds']:.1f} from 10,000 to 100,000 (first bar x 13, aim x 10.5)",
+    )
+    for name, took in pages[100_000].items():
+        ratio = took / pages[1_000][name]
+        say("P5", f"{name}: x {ratio:.2f} ({1000 * took:.2f} ms; first bar x 2, aim x 1.2)")
+
+
+def p8(_servers: postgres.Databases) -> None:
+    """`shuntbook serve` on a migrated SQLite file: to its first answer, and memory when idle."""
+    with tempfile.TemporaryDirectory() as folder:
+        environment = {**os.environ, "SHUNTBOOK_DATABASE_URL": f"sqlite:///{folder}/idle.db"}
+        command = [str(Path(sys.executable).with_name("shuntbook"))]
+        subprocess.run([*command, "migrate"], env=environment, check=True, capture_output=True)
+        with socket.create_server(("127.0.0.1", 0)) as free:
+            port = free.getsockname()[1]
+        began = time.perf_counter()
+        process = subprocess.Popen(
+            [*command, "serve", "--port", str(port)], env=environment, stderr=subprocess.DEVNULL
+        )
+        try:
+            while True:
+                try:
+                    with urllib.request.urlopen(f"http://127.0.0.1:{port}/health/ready", timeout=5):
+                        break
+                except OSError:
+                    time.sleep(0.01)
+            took = time.perf_counter() - began
+            status = Path(f"/proc/{process.pid}/status").read_text()
+            resident = next(line for line in status.splitlines() if line.startswith("VmRSS"))
+            mib = int(resident.split()[1]) / 1024
+        finally:
+            process.terminate()
+            process.wait()
+    say("P8", f"{took:.2f} s, {mib:.0f} MiB (first bar 3 s, 200 MiB; aim 1.5 s, 120 MiB)")
+
+
 def one_at_a_time(base: str, requests: list[dict[str, Any]]) -> None:
     """Post one after another on one connection."""
     import httpx
@@ -180,7 +241,7 @@ def one_at_a_time(base: str, requests: list[dict[str, Any]]) -> None:
 
 def main() -> None:
     """Run the named measurements."""
-    known = {"p1": p1, "p2": p2}
+    known = {"p1": p1, "p2": p2, "p3": p3, "p8": p8}
     parser = argparse.ArgumentParser(description=__doc__)
     parser.add_argument("names", nargs="*", help=f"of {', '.join(known)}; all if none is named")
     names = parser.parse_args().names or list(known)

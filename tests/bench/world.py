@@ -138,6 +138,9 @@ def book_content() -> dict[str, Any]:
     }
 
 
+EQUIPMENT = '{"schema":1,"circuit_kind":"dc","relay":{"rated_pick_up_v":1.0,"rated_drop_away_v":0.68}}'
+
+
 @dataclass(frozen=True)
 class World:
     """A service over a filled database; `keys` by depot."""
@@ -212,7 +215,7 @@ def _sections(connection: sa.Connection, depot: str, names: tuple[str, ...]) -> 
         "book": BOOK,
         "required_test_points": '["feed_end","relay_end"]',
         "adjacent": "[]",
-        "equipment": '{"schema":1,"circuit_kind":"dc","relay":{"rated_pick_up_v":1.0,"rated_drop_away_v":0.68}}',
+        "equipment": EQUIPMENT,
         "points_ends": 0,
         "insulated_joints": 2,
         "longest_parallel_m": 0.0,
