@@ -55,18 +55,22 @@ _ODD = re.compile(r"[:,\[]-?[0-9]+(?:\.0(?![0-9])|(?:\.[0-9]+)?[eE]|[0-9]{15})")
 """Numbers that the standard encoder may have written otherwise than RFC 8785: a whole float, one with an
 exponent, one beyond 2**53. Inside a string it is a false alarm."""
 
+_BEYOND = re.compile("[\U00010000-\U0010ffff]")
+"""Letters that names are ordered by otherwise in RFC 8785: beyond the basic plane."""
+
 
 def canonical(value: Any) -> str:
     """RFC 8785 text of a JSON value; a lone surrogate, which has no UTF-8, raises UnicodeError.
 
-    The standard encoder writes the same text many times faster, but for a few numbers; where there may
-    be one, the library writes it.
+    The standard encoder writes the same text many times faster, but for a few numbers and the order of a few
+    names; where there may be one, the library writes it.
     """
-    if isinstance(value, float):
+    if isinstance(value, float | int):
         return rfc8785.dumps(value).decode()
     text = _encode(value)
     text.encode()
-    return rfc8785.dumps(value).decode() if _ODD.search(text) else text
+    odd = _ODD.search(text) or (not text.isascii() and _BEYOND.search(text))
+    return rfc8785.dumps(value).decode() if odd else text
 
 
 def instant_text(instant: datetime) -> str:
