@@ -44,7 +44,7 @@ def cautions(
     if clock_offset_s is not None and abs(clock_offset_s) > CLOCK_OFFSET_S:
         yield Caution("clock_offset", f"The device's clock differs by {clock_offset_s} s from the server's.")
     yield from _reading_cautions(item, found, status)
-    yield from _task_cautions(item, status)
+    yield from _task_cautions(item, found, status)
     if any(visit.visited_at > item.rule.visited_at for visit in readings.counting(found.visits)):
         yield Caution(
             "newer_visit", "A newer visit of this section is stored and decides where both measured."
@@ -67,13 +67,16 @@ def _reading_cautions(item: Accepted, found: rules.SectionFacts, status: Status)
         )
 
 
-def _task_cautions(item: Accepted, status: Status) -> Iterator[Caution]:
+def _task_cautions(item: Accepted, found: rules.SectionFacts, status: Status) -> Iterator[Caution]:
+    """Why a task said to be done is not; of a newer visit that tried it as well, nothing is told here."""
     states = {task.task: task for task in status.tasks}
+    newer = [v for v in readings.counting(found.visits) if v.visited_at > item.rule.visited_at]
+    tried_since = {claim.task for visit in newer for claim in visit.tasks}
     for index, claim in enumerate(item.draft.tasks):
         task = states.get(claim.task)
         if task is None:
             reason = "No task of this name applies to the section; it is kept as said."
             yield Caution("unknown_task", reason, f"/tasks/{index}/task")
-        elif claim.done == "done":
+        elif claim.done == "done" and claim.task not in tried_since:
             for short in task.reasons:
                 yield Caution(short.code, short.reason, f"/tasks/{index}")

@@ -211,13 +211,14 @@ def furnish(found: Field, time_zone: str = "UTC") -> Field:
 
 
 def opened(database_url: str) -> tuple[Service, Clock]:
-    """A service on a migrated database, with the book in force; its clock stands on 2 January 2026."""
+    """A service on a migrated database; its clock stands on New Year's Day."""
     clock = Clock(datetime(2026, 1, 1, 9, tzinfo=UTC))
-    ids = count(1)
     database = Database(database_url, 5)
-    service = Service(database, clock, lambda: f"00000000-0000-7000-8000-{next(ids):012d}")
-    issue_book(service, clock)
-    return service, clock
+    return Service(database, clock, lambda: f"00000000-0000-7000-8000-{next(_IDS):012d}"), clock
+
+
+_IDS = count(1)
+"""Shared by all services of a process, since two may be open on one database."""
 
 
 @dataclass

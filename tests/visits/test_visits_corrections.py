@@ -130,6 +130,14 @@ def test_a_batch_does_not_spare_the_second_holder(field: Field) -> None:
     assert field.verdict().verdict == VerdictWord.OUTSIDE
 
 
+def test_a_failure_that_comes_corrected_already_raises_its_finding_all_the_same(field: Field) -> None:
+    """It was taken back before anybody knew of it, so no second holder can be asked any more."""
+    field.store(visit(2, AT, *drops(0.7), replaces=visit_id(1)), visit(1, AT, *FAILURE))
+    assert field.verdict().verdict == VerdictWord.WITHIN
+    rows = field.read(findings.page, state=None, section="TV114", kind=None, after=None, most=9)
+    assert [(row.kind, row.visit) for row in rows] == [("found_outside", visit_id(1))] * 2
+
+
 def test_what_was_left_outside_but_not_found_so_needs_no_second_holder(field: Field) -> None:
     field.store(visit(1, AT, *drops(0.3)), visit(2, AT, *drops(0.7), replaces=visit_id(1)))
     assert field.verdict().verdict == VerdictWord.WITHIN
