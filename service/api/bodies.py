@@ -75,7 +75,8 @@ def _pointer(kind: str, loc: tuple[int | str, ...], document: Any) -> str:
     parts: list[str] = []
     at = document
     for position, part in enumerate(loc):
-        if (isinstance(at, dict) and part in at) or (isinstance(at, list) and isinstance(part, int)):
+        in_list = isinstance(at, list) and isinstance(part, int) and part < len(at)
+        if in_list or (isinstance(at, dict) and part in at):
             at = at[part]  # type: ignore[index]
         elif not (kind == "missing" and position == len(loc) - 1):
             continue

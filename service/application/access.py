@@ -16,7 +16,6 @@ from typing import Any
 import sqlalchemy as sa
 from sqlalchemy.engine import Connection, RowMapping
 
-from service.application import feed
 from service.application.context import Service
 from service.errors import (
     ConflictError,
@@ -172,7 +171,6 @@ def _journal(tx: Transaction, action: str, label: str) -> None:
     row = _row(tx.connection, label)
     assert row is not None
     entry = journal.Entry(action, "key", label, (), content(_of(row)))
-    feed.open_service_stream(tx.connection)
     tx.append(journal.SERVICE, [entry])
 
 

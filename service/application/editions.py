@@ -15,7 +15,7 @@ import sqlalchemy as sa
 from sqlalchemy.engine import Row
 from sqlalchemy.exc import IntegrityError
 
-from service.application import books, feed, status
+from service.application import books, status
 from service.application.book_content import Content, Draft, unit_faults
 from service.application.books import EditionRecord
 from service.errors import ConflictError, Fault, NotAcceptableError, NotFoundError, StaleError
@@ -215,6 +215,5 @@ def _told(tx: Transaction, book: str, edition: str, action: str, depots: Iterabl
         if row.depot in using:
             entry = journal.Entry(action, "edition", name, None, content)
             status.rejudge_and_append(tx, row, None, [entry])
-    feed.open_service_stream(tx.connection)
     tx.append(journal.SERVICE, [journal.Entry(action, "edition", name, (), content)])
     return record

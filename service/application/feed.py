@@ -63,19 +63,6 @@ def line_text(row: dict[str, Any]) -> str:
     )
 
 
-def open_service_stream(connection: Connection) -> None:
-    """Begin the service's own chain, unless it has begun; two that begin it at once begin one."""
-    if journal.SERVICE not in streams(connection):
-        begun = {"depot": journal.SERVICE, "digest": journal.START}
-        connection.execute(
-            sa.text(
-                "INSERT INTO journal_head (depot, sequence, digest) VALUES (:depot, 0, :digest)"
-                " ON CONFLICT DO NOTHING"
-            ),
-            begun,
-        )
-
-
 def streams(connection: Connection) -> list[str]:
     """Every chain there is: each depot's, and the service's own."""
     return list(connection.execute(sa.select(_head.c.depot).order_by(_head.c.depot)).scalars())

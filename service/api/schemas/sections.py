@@ -11,6 +11,7 @@ from typing import Annotated, Any
 from pydantic import ConfigDict, Field, JsonValue, StringConstraints
 
 from service.api.schemas.base import Answer, Instant, Line, Name, Request
+from service.api.schemas.status import SUMMARY, SummaryAnswer
 from service.api.whole import IGNORED
 from service.application.equipment import Equipment, TestPoint
 from service.application.layouts import Layout
@@ -20,8 +21,6 @@ from service.application.sections import Recorded
 from service.rules.words import (
     Bonding,
     CircuitKind,
-    Compliance,
-    Hazard,
     Place,
     SectionState,
     Separation,
@@ -29,6 +28,7 @@ from service.rules.words import (
     Traction,
 )
 
+_SERVED: dict[str, JsonValue] = {"depot": "harrow-vale", "section": "TV114", "version": 1}
 _EXAMPLE: dict[str, JsonValue] = {
     "valid_from_on": "2026-11-02",
     "title": "TV 114",
@@ -214,11 +214,7 @@ class ContentAnswer(Answer):
 class SectionAnswer(ContentAnswer):
     """A section's present record. `sequence`: the journal's when its record or status last changed."""
 
-    model_config = ConfigDict(
-        json_schema_extra={
-            "examples": [_EXAMPLE | {"depot": "harrow-vale", "section": "TV114", "version": 1, "sequence": 8}]
-        }
-    )
+    model_config = ConfigDict(json_schema_extra={"examples": [_EXAMPLE | _SERVED | {"sequence": 8}]})
 
     sequence: int
 
@@ -226,23 +222,24 @@ class SectionAnswer(ContentAnswer):
 class SectionVersionAnswer(ContentAnswer):
     """One version of a section's record, with who recorded it and when."""
 
+    model_config = ConfigDict(
+        json_schema_extra={
+            "examples": [
+                _EXAMPLE | _SERVED | {"recorded_at": "2026-11-01T08:00:00Z", "recorded_by": "A. Engineer"}
+            ]
+        }
+    )
+
     recorded_at: Instant
     recorded_by: str
 
 
-class SummaryAnswer(Answer):
-    """A status in short; `compliance` null: not judged (planned, out of use, recovered)."""
-
-    compliance: Compliance | None
-    overdue: bool
-    worst_hazard: Hazard | None
-    next_due_on: date | None
-    holds_until: date | None
-    sequence: int
-
-
 class ListedAnswer(SectionAnswer):
     """A section in a list, with its status in short."""
+
+    model_config = ConfigDict(
+        json_schema_extra={"examples": [_EXAMPLE | _SERVED | {"sequence": 8, "status": SUMMARY}]}
+    )
 
     status: SummaryAnswer
 

@@ -5,7 +5,7 @@ Their examples serve the schemas of visits, audits and findings too.
 
 from __future__ import annotations
 
-from datetime import UTC, datetime
+from datetime import UTC, date, datetime
 from typing import Annotated, Any
 
 from pydantic import AfterValidator, AwareDatetime, ConfigDict
@@ -162,8 +162,8 @@ class SummaryAnswer(Answer):
     compliance: Compliance | None
     overdue: bool
     worst_hazard: Hazard | None
-    next_due_on: str | None
-    holds_until: str | None
+    next_due_on: date | None
+    holds_until: date | None
     sequence: int
 
 
