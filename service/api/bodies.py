@@ -77,7 +77,7 @@ def _pointer(kind: str, loc: tuple[int | str, ...], document: Any) -> str:
     for position, part in enumerate(loc):
         in_list = isinstance(at, list) and isinstance(part, int) and part < len(at)
         if in_list or (isinstance(at, dict) and part in at):
-            at = at[part]  # type: ignore[index]
+            at = at[part]
         elif not (kind == "missing" and position == len(loc) - 1):
             continue
         parts.append(str(part).replace("~", "~0").replace("/", "~1"))
