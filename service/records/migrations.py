@@ -7,6 +7,7 @@ fails or deletes children otherwise), checked before commit.
 from __future__ import annotations
 
 from pathlib import Path
+from typing import Any
 
 import sqlalchemy as sa
 from sqlalchemy.engine import Connection
@@ -32,13 +33,17 @@ def _run(url: str, revision: str, *, down: bool) -> None:
     engine = sa.create_engine(with_driver(url), poolclass=sa.NullPool)
     move = command.downgrade if down else command.upgrade
     with translated(), engine.connect() as connection:
-        if engine.dialect.name == "sqlite":
-            connection.exec_driver_sql("PRAGMA foreign_keys=OFF")
-            connection.commit()
+        sqlite = engine.dialect.name == "sqlite"
+        if sqlite:
+            raw: Any = connection.connection.dbapi_connection
+            raw.isolation_level = None  # or its driver would commit before every CREATE and ALTER
+            raw.execute("PRAGMA foreign_keys=OFF")
         with connection.begin():
+            if sqlite:
+                connection.exec_driver_sql("BEGIN IMMEDIATE")
             config.attributes["connection"] = connection
             move(config, revision)
-            if engine.dialect.name == "sqlite":
+            if sqlite:
                 _check_foreign_keys(connection)
     engine.dispose()
 
