@@ -46,7 +46,7 @@ def run(connection: Connection, *asked: Asked) -> list[list[tuple[Any, ...]]]:
             for each in asked:
                 text, values = _compiled(each.statement, connection.dialect)
                 cursors.append(raw.cursor().execute(text, {**values, **each.values}))
-        return [cursor.fetchall() if cursor.description else [] for cursor in cursors]
+        return [cursor.fetchall() if cursor.pgresult.nfields else [] for cursor in cursors]
     except driver.Error as error:
         if raw.closed:
             connection.invalidate(error)
