@@ -67,6 +67,7 @@ CIRCUIT = {"circuit": UK}
 NAMED = {"depot": "ashby", "section": "S"}
 READINGS = {"feed_v": {"value": 4, "u": 0.1}, "relay_v": {"value": 3.9, "u": 0.1}}
 AC = plain_circuit(frequency_hz=50)
+DOUBT = dict.fromkeys(("ballast", "emf", "feed_ohm", "loop_ohm", "drop_away"), 0.3)
 DROPS = {"drop_1_v": 0.06, "drop_2_v": 0.04, "length_m": 5, "rail_ohm_per_km": 0.05}
 CURRENT = {"normal_a": 5, "rail_ohm_per_km": [0.03, 0], "axle_ohm": 0.03, "upto_m": 3000}
 
@@ -165,6 +166,22 @@ REFUSED: list[tuple[str, dict[str, Any], list[tuple[str, str | None]]]] = [
         "ballast",
         {"circuit": AC, "readings": READINGS, "loop_relative_u": 0.1},
         [("missing", "/doubt"), ("not_used", "/loop_relative_u")],
+    ),
+    (
+        "ballast",
+        CIRCUIT
+        | {"readings": READINGS, "loop_relative_u": 0.1, "feed_relative_u": 0.1, "relay_relative_u": 0.1}
+        | {"doubt": DOUBT},
+        [("not_used", "/doubt")],
+    ),
+    (
+        "ballast",
+        {
+            "circuit": plain_circuit(frequency_hz=50, line={"ballast_ohm_km": None}),
+            "readings": READINGS | {"relay_a": {"value": 0.1, "u": 0.1}},
+            "doubt": DOUBT,
+        },
+        [("not_used", "/readings/relay_a"), ("missing", "/circuit/line/ballast_ohm_km")],
     ),
     ("rail-balance", DROPS | {"depot": "ashby"}, [("value_error", "")]),
     ("rail-balance", DROPS | {"saturated_bond_ohm": [0.1, 0]}, [("value_error", "")]),

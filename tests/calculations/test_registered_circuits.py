@@ -10,7 +10,6 @@ import pytest
 
 from service.application import layouts
 from service.application.section_content import Configuration
-from support.api import ACTOR
 from support.calculations import LOCAL, REGISTERED, Bench, equipment, named, plain_circuit
 from support.limit_books import limit
 
@@ -27,10 +26,6 @@ def nominal_circuit(**changes: Any) -> dict[str, Any]:
 @pytest.fixture(scope="module")
 def dc(bench: Bench) -> str:
     return bench.section("DC1")
-
-
-def figures(answer: dict[str, Any], name: str) -> dict[str, Any]:
-    return {member: answer[name][member] for member in answer[name]}
 
 
 def test_nominal_is_the_plain_circuit(bench: Bench, dc: str) -> None:
@@ -334,6 +329,30 @@ def test_a_saturated_bond_lowers_the_relay(bench: Bench) -> None:
     assert max(volts["feed_bond"], volts["relay_bond"]) < volts["sound"]
 
 
+def test_without_bonds_none_saturates(bench: Bench, dc: str) -> None:
+    body = named(dc, drop_1_v=0.06, drop_2_v=0.04, length_m=5, rail_ohm_per_km=0.05)
+    assert bench.ask("rail-balance", body)["ampere_turns"] is None
+    refused = bench.refused("rail-balance", body | {"saturated_bond_ohm": [0.03, 0]})
+    assert refused == [("not_physical", "/saturated_bond_ohm")]
+
+
+def test_worst_cases_that_exclude_each_other_leave_no_window(bench: Bench, dc: str) -> None:
+    needed = NEEDED | {"minimum_shunt_ohm": 1.0, "least_pick_up": 1.4}
+    asked = {"adjust": "feed_ohm", "range": [0, 30]}
+    body = named(dc, requirements=needed, adjustment=asked)
+    assert bench.ask("setting", body)["worst_case"] == {"window": None, "binds": None}
+    body["requirements"] = NEEDED | {"minimum_shunt_ohm": 50}
+    assert bench.ask("setting", body)["worst_case"] == {"window": None, "binds": None}
+
+
+def test_a_stated_ballast_goes_before_the_register(bench: Bench, dc: str) -> None:
+    drop = {}
+    for dry in (20, None):
+        found = bench.ask("shunt-limits", named(dc, spread={"ballast_ohm_km": [2, dry]}))
+        drop[dry] = found["worst_case"]["drop_shunt_ohm"]["worst"]["ohm"]
+    assert drop[20] > drop[None] == pytest.approx(0.836, abs=1e-3)
+
+
 def test_interference_with_a_registered_section(bench: Bench, dc: str) -> None:
     body = named(dc, normal_a=5, rail_ohm_per_km=[0.0289, 0], axle_ohm=0.0251, upto_m=3000)
     found = bench.ask("interference", body)
@@ -389,9 +408,8 @@ EXTRA: dict[str, dict[str, Any]] = {
 @pytest.mark.parametrize("calculation", EXTRA)
 def test_another_depots_section_is_not_found(bench: Bench, dc: str, calculation: str) -> None:
     body = named(dc) | EXTRA[calculation]
-    for client in (bench.api.client("read", depot="birchfield"),):
-        response = client.post(f"/v1/calculations/{calculation}", json=body)
-        assert (response.status_code, response.json()["type"]) == (404, "/problems/not-found")
+    other = bench.api.client("read", depot="birchfield").post(f"/v1/calculations/{calculation}", json=body)
+    assert (other.status_code, other.json()["type"]) == (404, "/problems/not-found")
     for changes in ({"depot": "birchfield"}, {"depot": "nowhere"}, {"section": "NONE"}):
         assert bench.post(calculation, body | changes).status_code == 404
     own = bench.api.client("read", depot="ashby").post(f"/v1/calculations/{calculation}", json=body)
@@ -404,5 +422,7 @@ def test_nothing_is_written(bench: Bench, dc: str) -> None:
     bench.ask("shunt-limits", named(dc))
     with bench.api.service.read() as connection:
         assert connection.exec_driver_sql("SELECT count(*) FROM journal").scalar() == before
+
+
+def test_the_scope_is_read(bench: Bench) -> None:
     assert bench.api.client("readings").post("/v1/calculations/shunt-limits", json={}).status_code == 403
-    assert ACTOR.holder not in bench.client.headers["authorization"]

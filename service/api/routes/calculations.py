@@ -63,7 +63,11 @@ if TYPE_CHECKING:
     from service.application.circuits import Registered
     from service.electrical.setting import Requirements
 
-router = APIRouter(prefix="/v1/calculations", tags=["calculations"])
+router = APIRouter(
+    prefix="/v1/calculations",
+    tags=["calculations"],
+    responses={404: {"description": "A section that is named in the body"}},
+)
 
 Reader = Annotated[Caller, Depends(needs("read"))]
 
