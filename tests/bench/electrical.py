@@ -19,7 +19,7 @@ from typing import Any
 
 import httpx
 import numpy as np
-import run
+import tools
 import world as worlds
 from data import ngspice_ladders
 
@@ -69,7 +69,7 @@ def p6(_servers: postgres.Databases) -> None:
             for netlist in (lines, nothing)
         )
         whole, bare = whole_s / ours_s, (whole_s - empty_s) / ours_s
-        run.say(
+        tools.say(
             "P6",
             f"{name}: 1/{whole:,.0f} of an ngspice run, 1/{bare:,.0f} of one that need not start "
             f"({ours_s * 1e6:.2f} µs a point, {whole_s * 1e3:.1f} ms a run, {empty_s * 1e3:.1f} ms of it "
@@ -83,7 +83,7 @@ def p7(servers: postgres.Databases) -> None:
         world = worlds.build(url, 1, 10)
         key = world.keys[world.depots[0]]
         world.service.database.close()
-        with run.served("service", url) as base, httpx.Client(base_url=base, timeout=60) as client:
+        with tools.served("service", url) as base, httpx.Client(base_url=base, timeout=60) as client:
             client.headers["Authorization"] = f"Bearer {key}"
             asks: dict[str, Callable[[], httpx.Response]] = {
                 "empty": lambda: client.get("/health/live"),
@@ -101,7 +101,7 @@ def p7(servers: postgres.Databases) -> None:
         median = {name: statistics.median(found) * 1e3 for name, found in times.items()}
         for name in ("operating-point", "shunt-limits"):
             over, over_key = median[name] - median["empty"], median[name] - median["with a key"]
-            run.say(
+            tools.say(
                 "P7",
                 f"{name}: + {over:.2f} ms over an empty endpoint ({median['empty']:.2f} ms), "
                 f"+ {over_key:.2f} ms over one that checks the key (first bar + 4 ms, aim + 1.5 ms)",
@@ -131,7 +131,7 @@ def p9(_servers: postgres.Databases) -> None:
         errors["layout, nothing left" if nothing else "layout"].append(abs(found - expected) / whole)
     errors["drop shunt"] = list(_drop_shunt_errors(against))
     for name, found_errors in errors.items():
-        run.say(
+        tools.say(
             "P9",
             f"{name}: {max(found_errors):.1e} at most in {len(found_errors)} (first bar 1e-5, aim 1e-6)",
         )

@@ -14,8 +14,6 @@ import sys
 import tempfile
 import time
 import urllib.request
-from collections.abc import Iterator
-from contextlib import contextmanager
 from datetime import timedelta
 from pathlib import Path
 from typing import Any
@@ -23,9 +21,11 @@ from typing import Any
 HERE = Path(__file__).parent
 sys.path[:0] = [str(HERE), str(HERE.parent)]
 
+import electrical  # noqa: E402
 import national  # noqa: E402
 import psycopg  # noqa: E402
 import world as worlds  # noqa: E402
+from tools import analyze, empty, plain, say, served  # noqa: E402
 
 from support import postgres  # noqa: E402
 
@@ -38,30 +38,6 @@ CREATE CONSTRAINT TRIGGER slow_commit AFTER INSERT ON journal DEFERRABLE INITIAL
 FOR EACH ROW EXECUTE FUNCTION slow_commit();
 """
 """Stands for a disk that takes 5 ms: the sleep is in COMMIT, with every lock still held."""
-
-
-def say(name: str, text: str) -> None:
-    """One line of the report."""
-    print(f"{name}  {text}", flush=True)
-
-
-def plain(url: str) -> str:
-    """The URL as psycopg takes it."""
-    return url.replace("postgresql+psycopg", "postgresql")
-
-
-@contextmanager
-def served(module: str, url: str) -> Iterator[str]:
-    """A server process of `serving.py` on a free port."""
-    process = subprocess.Popen(
-        [sys.executable, HERE / "serving.py", module, url], stdout=subprocess.PIPE, text=True
-    )
-    try:
-        assert process.stdout is not None
-        yield process.stdout.readline().strip()
-    finally:
-        process.terminate()
-        process.wait()
 
 
 def load(base: str, requests: list[dict[str, Any]]) -> dict[str, float]:
@@ -95,7 +71,7 @@ def p1(servers: postgres.Databases) -> None:
         for depot_count in (1, 16):
             shares = {}
             for module in ("floor", "service"):
-                with servers.cloned(_empty) as url:
+                with servers.cloned(empty) as url:
                     world = worlds.build(url, depot_count, 320)
                     if commit:
                         with psycopg.connect(plain(url), autocommit=True) as connection:
@@ -117,17 +93,6 @@ def p1(servers: postgres.Databases) -> None:
             )
 
 
-def analyze(url: str) -> None:
-    """What autovacuum does within a minute, and the tests' server never: without it the plans of foreign
-    key checks, made while tables were empty, scan them whole."""
-    with psycopg.connect(plain(url), autocommit=True) as connection:
-        connection.execute("ANALYZE")
-
-
-def _empty(_url: str) -> None:
-    """A template with nothing in it: worlds migrate it themselves."""
-
-
 def p2(servers: postgres.Databases) -> None:
     """200 visits a request: readings a second as a share of raw COPY of the readings.
 
@@ -135,7 +100,7 @@ def p2(servers: postgres.Databases) -> None:
     """
     import floor
 
-    with servers.cloned(_empty) as url:
+    with servers.cloned(empty) as url:
         world = worlds.build(url, 1, 2000)
         batches = []
         for number in range(12):
@@ -174,7 +139,7 @@ def p3(servers: postgres.Databases) -> None:
     """Audit of 10,000 and 100,000 sections by twenty limits (P3, P4), and a page of them by status (P5)."""
     found, pages = {}, {}
     for count in (1_000, 10_000, 100_000):
-        with servers.cloned(_empty) as url:
+        with servers.cloned(empty) as url:
             worlds.build(url, 1, count).service.database.close()
             national.fill(plain(url))
             pages[count] = national.measured("list", url)
@@ -241,7 +206,15 @@ def one_at_a_time(base: str, requests: list[dict[str, Any]]) -> None:
 
 def main() -> None:
     """Run the named measurements."""
-    known = {"p1": p1, "p2": p2, "p3": p3, "p8": p8}
+    known = {
+        "p1": p1,
+        "p2": p2,
+        "p3": p3,
+        "p6": electrical.p6,
+        "p7": electrical.p7,
+        "p8": p8,
+        "p9": electrical.p9,
+    }
     parser = argparse.ArgumentParser(description=__doc__)
     parser.add_argument("names", nargs="*", help=f"of {', '.join(known)}; all if none is named")
     names = parser.parse_args().names or list(known)

@@ -35,6 +35,7 @@ BAD_CIRCUITS: list[tuple[dict[str, Any], str]] = [
     ({"line": {"ballast_ohm_km": -1}}, "/circuit/line/ballast_ohm_km"),
     ({"line": {"loop_ohm_per_km": [-0.1, 0]}}, "/circuit/line/loop_ohm_per_km/0"),
     ({"line": {"loop_ohm_per_km": [0.1, 0.5]}}, "/circuit/line/loop_ohm_per_km"),
+    ({"line": {"loop_ohm_per_km": [0.1]}}, "/circuit/line/loop_ohm_per_km/1"),
     ({"feed": {"emf_v": 0}}, "/circuit/feed/emf_v"),
     ({"feed": {"emf_v": "10"}}, "/circuit/feed/emf_v"),
     ({"feed": {"emf_v": True}}, "/circuit/feed/emf_v"),
