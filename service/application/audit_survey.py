@@ -6,7 +6,7 @@ Reads only. What is kept of it is in `audit_keeping`.
 from __future__ import annotations
 
 from collections import Counter
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from datetime import date, datetime
 from typing import Any
 
@@ -16,6 +16,7 @@ from service.application import findings
 from service.application.answers import day, instant, task_json
 from service.application.facts import Gathered, Moment, gather
 from service.records import journal
+from service.records.unit_of_work import local_day
 from service.rules.findings import FindingSeed, findings_of
 from service.rules.status import Status, judge
 from service.rules.words import SectionState, TaskState
@@ -49,10 +50,16 @@ def survey(connection: Connection, moment: Moment, now: datetime) -> Survey:
 
 
 def show_too(connection: Connection, made: Survey, names: list[str]) -> None:
-    """Show sections that are in order as judged, but of which a finding stands."""
-    for found in gather(connection, made.moment, names) if names else ():
-        status = judge(found.facts, found.book, found.editions, made.moment.as_of)
-        made.sections[status.section] = _section_json(found, status, made.moment.as_of)
+    """Show sections that were not to be listed, but of which a finding stands.
+
+    As judged on the audit's day; one recorded only after it, as of the day on which the audit is made.
+    """
+    today = local_day(made.known_at, made.moment.time_zone)
+    for moment in (made.moment, replace(made.moment, as_of=today, present=False)):
+        left = [name for name in names if name not in made.sections]
+        for found in gather(connection, moment, left) if left else ():
+            status = judge(found.facts, found.book, found.editions, moment.as_of)
+            made.sections[status.section] = _section_json(found, status, moment.as_of)
 
 
 def _note(made: Survey, found: Gathered, status: Status) -> None:

@@ -240,16 +240,20 @@ class TestFoundOutside:
         )
 
     def test_an_audit_of_the_day_before_lists_it_all_the_same(self, world: World) -> None:
-        """Whoever reads the list reads it today."""
+        """Whoever reads the list reads it today; A2 has no record yet on that day."""
         world.section("A1")
+        world.clock.move(days=1)
+        world.section("A2")
         world.visit("A1", 0.3, "as_found")
-        world.audit(MONDAY - timedelta(days=1))
-        found = only(world, kind="found_outside")
-        assert (found["opened_on"], found["last_seen_on"], found["weeks_open"]) == (
-            "2026-11-02",
-            "2026-11-02",
-            0,
-        )
+        world.visit("A2", 0.3, "as_found")
+        world.audit(MONDAY)
+        assert [(one["section"], one["state"]) for one in world.weekly()] == [
+            ("A1", "in_use"),
+            ("A2", "in_use"),
+        ]
+        for found in kept(world, kind="found_outside"):
+            assert (found["opened_on"], found["last_seen_on"]) == ("2026-11-03", "2026-11-03")
+            assert (found["state"], found["weeks_open"]) == ("new", 0)
 
 
 def test_the_gravest_first_and_what_was_found_outside_unreported_at_the_top(world: World) -> None:

@@ -91,14 +91,14 @@ JSON = st.recursive(
 )
 
 
-@settings(max_examples=500, deadline=None)
+@settings(max_examples=200, deadline=None)
 @given(JSON)
 def test_as_the_library_writes_it(value: Any) -> None:
     assert canonical(value).encode() == rfc8785.dumps(value)
 
 
 @pytest.mark.slow
-@settings(max_examples=3_000, deadline=None)
+@settings(max_examples=2_000, deadline=None)
 @given(JSON)
 def test_as_the_library_writes_it_longer(value: Any) -> None:
     assert canonical(value).encode() == rfc8785.dumps(value)
