@@ -6,6 +6,7 @@ application, each measurement in a process of its own so that its memory can be 
 
 from __future__ import annotations
 
+import gc
 import json
 import subprocess
 import sys
@@ -101,6 +102,7 @@ def _audit(url: str) -> dict[str, float]:
     service = _service(url)
     with service.read() as connection:
         audits.due(connection, worlds.NOW)
+    gc.freeze()  # as `serve` does
     before = _resident("VmRSS")
     Path("/proc/self/clear_refs").write_text("5")  # the peak counts from here
     began = time.perf_counter()
