@@ -155,8 +155,9 @@ def _check(wanted: Wanted, now: datetime) -> None:
     faults = []
     if not wanted.scopes or set(wanted.scopes) - set(SCOPES):
         faults.append(Fault("scope", f"a key has one or more of the scopes {', '.join(SCOPES)}"))
-    if not wanted.holder.strip():
-        faults.append(Fault("holder", "a key has a holder"))
+    if not wanted.holder or wanted.holder != wanted.holder.strip() or not wanted.holder.isprintable():
+        # two holders are told apart by these letters, so nothing unseen may make one person two
+        faults.append(Fault("holder", "a key has a holder: one line, with no blanks at its ends"))
     if wanted.expires_at is not None and wanted.expires_at <= now:
         faults.append(Fault("expired", "the key would have expired already"))
     if faults:

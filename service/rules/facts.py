@@ -117,8 +117,11 @@ class Visit:
 
 @dataclass(slots=True, unsafe_hash=True)
 class Reading:
-    """One reading, in the base unit. Never assigned to; not frozen, since that makes each one ten times
-    as slow to build, and an audit builds millions."""
+    """One reading, in the base unit.
+
+    Never assigned to. Not declared frozen only because a frozen one takes ten times as long to build,
+    and an audit builds millions.
+    """
 
     visit: str
     quantity: str

@@ -44,7 +44,7 @@ def test_a_key_is_shown_what_it_is_good_for(api: Api) -> None:
             "scopes": ["read", "readings"],
             "depot": "harrow",
             "device": "HH-07",
-            "created_at": "2026-11-30T09:00:00Z",
+            "created_at": "2026-11-30T09:00:00.000000Z",
             "expires_at": None,
         }
         assert text not in answer.text

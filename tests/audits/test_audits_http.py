@@ -205,7 +205,7 @@ def test_an_answer_to_a_finding(client: httpx.Client, world: World) -> None:
     assert {name: said[name] for name in RESPONSE if name != "reported_at"} == {
         name: value for name, value in RESPONSE.items() if name != "reported_at"
     }
-    assert (said["reported_at"], said["updated_by"]) == ("2026-11-02T08:30:00Z", "R. Ashdown")
+    assert (said["reported_at"], said["updated_by"]) == ("2026-11-02T08:30:00.000000Z", "R. Ashdown")
     assert client.put(put, json=RESPONSE, headers={"If-Match": tag}).status_code == 412
     # As it was read, so may it be sent back: what the server owns is ignored.
     tag = answered.headers["etag"]

@@ -12,7 +12,7 @@ from pydantic import ConfigDict, Field
 
 from service.api.schemas.base import Answer, Instant, Line, Remarks, Request
 from service.api.schemas.status import VERDICT, TaskAnswer, VerdictAnswer
-from service.rules.words import FindingKind, FindingState, Hazard
+from service.rules.words import FindingState, Hazard
 
 AUDIT: dict[str, Any] = {
     "depot": "harrow-vale",
@@ -150,7 +150,7 @@ class FindingAnswer(Answer):
     depot: str
     finding: str
     section: str
-    kind: FindingKind
+    kind: str
     hazard: Hazard | None
     state: FindingState
     quantity: str | None

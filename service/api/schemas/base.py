@@ -6,10 +6,11 @@ enumeration words but neither `true` nor "1.5" for a number.
 
 from __future__ import annotations
 
-from datetime import UTC
 from typing import Annotated
 
 from pydantic import AfterValidator, AwareDatetime, BaseModel, ConfigDict, PlainSerializer, StringConstraints
+
+from service.records.journal import instant_text
 
 
 class Request(BaseModel):
@@ -43,8 +44,6 @@ Remarks = Annotated[str, StringConstraints(max_length=2000), AfterValidator(_pri
 
 Instant = Annotated[
     AwareDatetime,
-    PlainSerializer(
-        lambda at: at.astimezone(UTC).isoformat().replace("+00:00", "Z"), return_type=str, when_used="json"
-    ),
+    PlainSerializer(instant_text, return_type=str, when_used="json"),
 ]
 """RFC 3339 instant; any offset accepted, `Z` answered."""
