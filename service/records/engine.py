@@ -107,6 +107,8 @@ def _meaning(error: exc.DBAPIError) -> Exception:
     state = str(getattr(error.orig, "sqlstate", None) or "")
     if state in ("42P01", "42703", "42883"):  # a table, column or function is missing
         return StorageFaultError("The database is not migrated to this version: run `shuntbook migrate`.")
+    if state in ("55P03", "40P01", "40001"):  # a lock not had in time, a deadlock, a write that lost
+        return UnavailableError("Others are writing here at the moment; post the same again shortly.")
     if state.startswith("53") or state == "25006":
         return UnavailableError("The database has no room or takes no writes at the moment; try again later.")
     if error.connection_invalidated or isinstance(error, exc.OperationalError | exc.InterfaceError):
