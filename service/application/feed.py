@@ -8,14 +8,10 @@ from __future__ import annotations
 from dataclasses import dataclass
 from typing import Any
 
-import sqlalchemy as sa
 from sqlalchemy.engine import Connection
 
 from service.errors import ConflictError
 from service.records import journal
-from service.records.tables import JournalHead
-
-_head = JournalHead.__table__  # type: ignore[attr-defined]
 
 
 @dataclass(frozen=True, slots=True)
@@ -61,8 +57,3 @@ def line_text(row: dict[str, Any]) -> str:
         f'"recorded_at":"{row["recorded_at"]}","sections":{row["sections"]},"sequence":{row["sequence"]},'
         f'"subject":{subject}}}'
     )
-
-
-def streams(connection: Connection) -> list[str]:
-    """Every chain there is: each depot's, and the service's own."""
-    return list(connection.execute(sa.select(_head.c.depot).order_by(_head.c.depot)).scalars())

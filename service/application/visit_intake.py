@@ -19,7 +19,7 @@ from service.application.visit_content import Draft
 from service.application.visit_reads import Known
 from service.errors import ConflictError, Fault, ForbiddenError, NotAcceptableError, ShuntbookError
 from service.records.unit_of_work import Transaction
-from service.rules import doubtful, verdicts
+from service.rules import doubtful, readings, verdicts
 from service.rules import facts as rules
 from service.rules.limits import in_force
 from service.rules.quantities import to_base
@@ -121,12 +121,9 @@ class Intake:
         if self._section_of(replaces) not in (None, draft.section):
             reason = "names a visit of another section: one at the wrong section is voided instead"
             yield Fault("other_section", reason, "/replaces")
-        following = {visit.visit: visit.replaces for visit in self.visits.get(draft.section, ())}
-        following |= {visit: item.draft.replaces for visit, item in self.accepted.items()}
-        here: str | None = replaces
-        while here is not None and here != draft.visit:
-            here = following.pop(here, None)
-        if here is not None:
+        others = [item.rule for item in self.accepted.values()]
+        own = rules.Visit(draft.visit, draft.visited_at, self.tx.now.date(), replaces=replaces)
+        if readings.replaces_cycle([*self.visits.get(draft.section, ()), *others, own]):
             yield Fault("replaces_cycle", "the visits would replace each other in a circle", "/replaces")
 
     def _section_of(self, visit: str) -> str | None:
