@@ -23,8 +23,10 @@ import tools
 import world as worlds
 from data import ngspice_ladders
 
+from service.electrical.bonding import bonding_proof
 from service.electrical.circuit import Feed, Line, PlainCircuit, Shunt, operating_point
-from service.electrical.layout import without_bond
+from service.electrical.hiding import Ranges
+from service.electrical.layout import Bond, Layout, LayoutFeed, LayoutRelay, Leg, without_bond
 from service.electrical.relay import Relay
 from service.electrical.shunt import residual_voltage, shunt_limits
 from support import postgres
@@ -172,6 +174,37 @@ def _drop_shunt_errors(against: ModuleType) -> Iterator[float]:
             shunted = case | {"shunt": {"section": section, "ohm": float(ohm)}}
             volts = abs(complex(*ngspice_ladders.solve_plain(shunted)["relay_v"]))
             yield abs(volts / float(circuit.relay.drop_away_v) - 1)
+
+
+def proof(_servers: postgres.Databases) -> None:
+    """A bonding proof of twelve legs: every bond and rail opened and every joint shorted."""
+    layout = _twelve_legs()
+    for name, ranges in (
+        ("earth path unknown", Ranges((4.0, 40.0), None)),
+        ("ballast and earth path in ranges", Ranges((4.0, 40.0), (5.0, 50.0))),
+    ):
+        took_s = min(_took(lambda ranges=ranges: bonding_proof(layout, ranges, 0.5)) for _ in range(3))
+        tools.say("proof", f"12 legs, {name}: {1000 * took_s:.0f} ms (first bar 500 ms, aim 50 ms)")
+
+
+def _twelve_legs() -> Layout:
+    """Eight legs one after the other through bonds, and four that hang on at points."""
+    main = [Leg(f"m{n}", (f"m{n}s1", f"m{n}s2"), (f"m{n}e1", f"m{n}e2"), 60.0) for n in range(8)]
+    side = [Leg(f"d{n}", (f"d{n}s1", f"d{n}s2"), (f"d{n}e1", f"d{n}e2"), 40.0) for n in range(4)]
+    pairs = {f"k{n}.{rail}": (f"m{n}e{rail}", f"m{n + 1}s{rail}") for n in range(7) for rail in (1, 2)} | {
+        f"h{n}.{rail}": (f"m{2 * n}e{rail}", f"d{n}s{rail}") for n in range(4) for rail in (1, 2)
+    }
+    return Layout(
+        frequency_hz=0.0,
+        loop_ohm_per_km=0.06,
+        ballast_ohm_km=10.0,
+        rail_to_earth_ohm_km=None,
+        legs=(*main, *side),
+        bonds=tuple(Bond(name, pair, 0.0015) for name, pair in pairs.items()),
+        joints=(),
+        feed=LayoutFeed(("m0s1", "m0s2"), 5.0, 3.0),
+        relay=LayoutRelay(("m7e1", "m7e2"), 9.0, 1.4, 0.95),
+    )
 
 
 def _ask(client: httpx.Client, calculation: str) -> httpx.Response:

@@ -214,6 +214,7 @@ def main() -> None:
         "p7": electrical.p7,
         "p8": p8,
         "p9": electrical.p9,
+        "proof": electrical.proof,
     }
     parser = argparse.ArgumentParser(description=__doc__)
     parser.add_argument("names", nargs="*", help=f"of {', '.join(known)}; all if none is named")
