@@ -105,7 +105,7 @@ def test_each_request_is_one_line_without_what_is_private(api: Api, logged: io.S
     text = api.key("read", label="handheld")
     answer = api.client().get("/v1/depots?page_size=7", headers={"Authorization": f"Bearer {text}"})
     api.client().get("/v1/depots", headers={"Authorization": "Bearer sbk_guess"})
-    api.client().get("/health/live")  # a line is written after its answer, but before the next request is read
+    api.client().get("/health/live")  # a line is written before the next request is read
     good, bad = lines(logged, "request")[:2]
     assert (good["route"], good["status"], good["key"]) == ("/v1/depots", 200, "handheld")
     assert good["request"] == answer.headers["x-request-id"]
