@@ -63,12 +63,11 @@ def post(tx: Transaction, depot: str, drafts: Sequence[Draft], clock_offset_s: i
     ]
     found = _with_accepted(read, accepted)
     replacing = _replacing(read, accepted)
+    rows.append(latest.advanced([row for row in rows[1].rows if row["section"] not in replacing]))
     if replacing:  # which readings decide is told by all that is stored
         bulk.insert_all(tx.connection, *rows)
         rows = []
         found = _derived(tx, read, replacing, found)
-    else:
-        rows.append(latest.advanced(rows[1].rows))
     answered = sorted({one.draft.section for one in decisions if one.accepted is not None})
     judged = {
         facts.record.section: (facts, now)

@@ -194,6 +194,19 @@ def test_a_correction_inside_a_batch(handheld: Handheld, *, correction_first: bo
     assert handheld.field.verdict("relay_voltage").measured == 2.1
 
 
+def test_a_correction_at_one_section_leaves_the_others_of_its_batch_as_they_are(handheld: Handheld) -> None:
+    """Each section's newest readings decide, whatever another section's visit in the same batch corrects."""
+    handheld.field.section("TV117")
+    elsewhere = visit(3, MAY, reading("relay_voltage", 2.3), section="TV117")
+    wrong = visit(1, MAY, reading("relay_voltage", 4.5))
+    right = visit(2, MAY, reading("relay_voltage", 2.1), replaces=visit_id(1))
+    handheld.batch([wrong, right, elsewhere])
+    assert [(row[0], row[3]) for row in handheld.field.latest()] == [
+        ("TV114", visit_id(2)),
+        ("TV117", visit_id(3)),
+    ]
+
+
 def test_the_clients_clock_is_that_of_the_whole_batch(handheld: Handheld) -> None:
     answer = handheld.batch([plain(1), plain(2)], headers={"Date": "Mon, 15 Jun 2026 09:10:00 GMT"})
     assert [one["clock_offset_s"] for one in answer.json()] == [600, 600]
