@@ -27,6 +27,7 @@ import psycopg  # noqa: E402
 import world as worlds  # noqa: E402
 from tools import analyze, empty, plain, say, served  # noqa: E402
 
+from service.application import visit_content  # noqa: E402
 from support import postgres  # noqa: E402
 
 CLIENTS = 16
@@ -60,7 +61,7 @@ def posts(world: worlds.World, depots: tuple[str, ...], count: int) -> list[dict
         depot = depots[number % len(depots)]
         section = world.sections[(number // len(depots)) % len(world.sections)]
         at = worlds.NOW - timedelta(seconds=count - number)
-        body = json.dumps(worlds.wire(worlds.visit(section, at)))
+        body = json.dumps(visit_content.wire(worlds.visit(section, at)))
         made.append({"path": f"/v1/depots/{depot}/visits", "key": world.keys[depot], "body": body})
     return made
 
@@ -105,7 +106,7 @@ def p2(servers: postgres.Databases) -> None:
         batches = []
         for number in range(12):
             several = [
-                worlds.wire(worlds.visit(world.sections[(number * 200 + place) % 2000], worlds.NOW))
+                visit_content.wire(worlds.visit(world.sections[(number * 200 + place) % 2000], worlds.NOW))
                 for place in range(200)
             ]
             batches.append(several)

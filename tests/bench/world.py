@@ -8,7 +8,6 @@ from __future__ import annotations
 
 import json
 import secrets
-from collections.abc import Iterator
 from dataclasses import dataclass
 from datetime import UTC, date, datetime, timedelta
 from typing import Any
@@ -16,7 +15,7 @@ from typing import Any
 import sqlalchemy as sa
 from uuid6 import uuid7
 
-from service.application import access, depots, editions, instruments, visits
+from service.application import access, depots, editions, instruments
 from service.application.book_content import Draft as BookDraft
 from service.application.context import Service
 from service.application.visit_content import Draft, ReadingDraft, TaskDraft
@@ -227,8 +226,8 @@ def _sections(connection: sa.Connection, depot: str, names: tuple[str, ...]) -> 
     )
 
 
-def visit(section: str, at: datetime, spoil: float = 1.0) -> Draft:
-    """A visit with twelve readings; `spoil` scales them, so that 0.2 is outside."""
+def visit(section: str, at: datetime) -> Draft:
+    """A visit with twelve readings."""
     return Draft(
         visit=str(uuid7()),
         section=section,
@@ -245,7 +244,7 @@ def visit(section: str, at: datetime, spoil: float = 1.0) -> Draft:
                 test_point,
                 "as_left",
                 "eq",
-                round(value * spoil, 6),
+                value,
                 unit,
                 instrument,
                 0.5 if quantity == "residual_voltage" else None,
@@ -254,27 +253,3 @@ def visit(section: str, at: datetime, spoil: float = 1.0) -> Draft:
             for quantity, test_point, value, unit, instrument in READINGS
         ),
     )
-
-
-def wire(draft: Draft) -> dict[str, Any]:
-    """The JSON of a draft."""
-    from service.application import visit_content
-
-    return visit_content.wire(draft)
-
-
-def fill(world: World, depot: str, times: int, bad_every: int) -> Iterator[int]:
-    """Post `times` visits to every section through the application, in batches; yields how many so far."""
-    actor = Actor("key-00", "C. Poster")
-    done = 0
-    for turn in range(times):
-        at = NOW - timedelta(days=30 * (times - turn))
-        for start in range(0, len(world.sections), 500):
-            batch = [
-                visit(name, at, 0.2 if (start + place) % bad_every == 0 and turn == times - 1 else 1.0)
-                for place, name in enumerate(world.sections[start : start + 500])
-            ]
-            with world.service.unit_of_work(actor) as tx:
-                visits.post(tx, depot, batch, None)
-            done += len(batch)
-            yield done
